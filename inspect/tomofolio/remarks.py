@@ -3,10 +3,10 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from enum import Enum
+from enum import StrEnum
 
 
-class Severity(str, Enum):
+class Severity(StrEnum):
     """How much a remark weighs. ``STOP`` means that the figures it names are left out."""
 
     NOTE = "note"

@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass
-from enum import Enum
+from enum import StrEnum
 from functools import cached_property
 
 import numpy as np
@@ -22,7 +22,7 @@ class Grid:
     """Where the centre of every voxel is.
 
     The voxel (k, j, i) lies at
-    ``origin_mm + i·column_spacing·direction[:, 0] + j·row_spacing·direction[:, 1] + slice_positions[k]·direction[:, 2]``,
+    ``origin_mm + direction @ (i · column_spacing_mm, j · row_spacing_mm, slice_positions_mm[k])``,
     the plane equation of DICOM PS3.3 C.7.6.2.1.1 with the slices along one straight axis. The axis need not be
     perpendicular to the slices (tilted gantry) and the gaps need not be equal.
 
@@ -153,7 +153,7 @@ def _interpolate_on(at: Array, knots: Array, values: Array) -> Array:
     return np.where(at > knots[-1], values[-1] + (at - knots[-1]) * last, inside)
 
 
-class Kind(str, Enum):
+class Kind(StrEnum):
     """What was scanned. ``UNKNOWN`` is treated as a patient wherever that is the safer way."""
 
     PATIENT = "patient"
@@ -161,7 +161,7 @@ class Kind(str, Enum):
     UNKNOWN = "unknown"
 
 
-class Basis(str, Enum):
+class Basis(StrEnum):
     """Where the unit comes from."""
 
     DECLARED = "declared"

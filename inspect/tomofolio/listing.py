@@ -1,0 +1,100 @@
+"""What the command line prints: the table of series and the closing lines of a run."""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Sequence
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+from tomofolio.remarks import Severity
+
+if TYPE_CHECKING:
+    from tomofolio.case import Case
+    from tomofolio.intake import SeriesSummary
+
+SURVEY_KEYS = (
+    "uid",
+    "description",
+    "modality",
+    "sop_class",
+    "slices",
+    "shape",
+    "spacing_mm",
+    "unit",
+    "fit",
+    "recommended",
+    "reasons",
+)
+
+
+def survey_json(found: Sequence[SeriesSummary]) -> str:
+    """The list of series as JSON, in the order of the survey."""
+    rows = [{key: getattr(entry, key) for key in SURVEY_KEYS} for entry in found]
+    return json.dumps(rows, ensure_ascii=False, allow_nan=False, indent=2)
+
+
+def survey_table(found: Sequence[SeriesSummary]) -> None:
+    """Print the list of series as a table: which can be reported, and why not."""
+    from rich.console import Console
+    from rich.table import Table
+    from rich.text import Text
+
+    console = Console(soft_wrap=False)
+    if not found:
+        console.print("No image series found.")
+        return
+    table = Table(box=None, pad_edge=False, header_style="bold", row_styles=("", "dim"))
+    table.add_column("report?", no_wrap=True)
+    table.add_column("series", max_width=30)
+    table.add_column("slices", justify="right")
+    table.add_column("rows × columns", justify="right")
+    table.add_column("spacing mm", justify="right")
+    table.add_column("unit")
+    table.add_column("why", min_width=24)
+    for entry in found:
+        verdict = "recommended" if entry.recommended else "yes" if entry.fit else "no"
+        size = f"{entry.shape[1]} × {entry.shape[2]}" if entry.shape else "–"
+        spacing = " × ".join(f"{s:.3g}" for s in entry.spacing_mm) if entry.spacing_mm else "–"
+        name = Text.assemble(entry.description or "(no description)", "\n", (entry.uid, "dim"))
+        name.overflow = "ellipsis"
+        reasons = "\n".join(entry.reasons)
+        table.add_row(verdict, name, str(entry.slices), size, spacing, entry.unit or "–", reasons)
+    console.print(table)
+
+
+def closing_lines(case: Case, report: Path, data: Path | None) -> list[str]:
+    """Five lines at the end of a run: what was found, what to look at first, where the files are."""
+    grid, unit = case.volume.grid, case.volume.unit
+    peaks = ", ".join(f"{item.name} around {item.peak:.4g} {unit.symbol}" for item in case.ranges.items)
+    lines = [
+        f"Scan     {grid.shape[0]} slices of {grid.rows} × {grid.columns}, {unit.quantity} ({unit.basis.value})",
+        f"Ranges   {peaks}",
+        f"Measured {_measured(case)}",
+        f"Look at  {_look_at(case)}",
+        f"Files    {report}" + (f" and {data}{'/' if not str(data).endswith('/') else ''}" if data else ""),
+    ]
+    return lines
+
+
+def _measured(case: Case) -> str:
+    part, voids, inclusions = case.findings.part, case.findings.voids, case.findings.inclusions
+    texts = []
+    if part is not None:
+        texts.append(f"part {part.volume_mm3 / 1000:.4g} cm³")
+    if voids is not None:
+        share = "" if voids.porosity_percent is None else f", porosity {voids.porosity_percent:.3g} %"
+        texts.append(f"{voids.count} closed voids{share}")
+    if inclusions is not None:
+        texts.append(f"{inclusions.count} inclusions")
+    return "; ".join(texts) or "range volumes"
+
+
+def _look_at(case: Case) -> str:
+    every = (case.series, case.ranges, case.body, case.fitness, case.findings)
+    remarks = [remark for stage in every for remark in stage.remarks if remark.severity is not Severity.NOTE]
+    if not remarks:
+        return "page 1"
+    worst = min(remarks, key=lambda remark: remark.severity is not Severity.STOP)
+    more = f" (and {len(remarks) - 1} more cautions in the report)" if len(remarks) > 1 else ""
+    return f"{worst.text}{more}"
