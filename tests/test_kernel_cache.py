@@ -2,6 +2,7 @@
 
 import os
 import stat
+from pathlib import Path
 
 from tomofolio import _kernel_cache
 
@@ -18,14 +19,14 @@ def test_the_folder_is_private_and_the_same_each_time(monkeypatch, tmp_path):
     first = os.environ.pop("NUMBA_CACHE_DIR")
     _kernel_cache.choose_kernel_cache()
     assert os.environ["NUMBA_CACHE_DIR"] == first
-    assert stat.S_IMODE(os.stat(first).st_mode) == 0o700
+    assert stat.S_IMODE(Path(first).stat().st_mode) == 0o700
 
 
 def test_a_folder_that_others_can_write_is_not_trusted(monkeypatch, tmp_path):
     read_only(monkeypatch, tmp_path)
     _kernel_cache.choose_kernel_cache()
     planted = os.environ.pop("NUMBA_CACHE_DIR")
-    os.chmod(planted, 0o777)
+    Path(planted).chmod(0o777)
     _kernel_cache.choose_kernel_cache()
     assert os.environ["NUMBA_CACHE_DIR"] != planted
 
