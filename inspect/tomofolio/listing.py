@@ -35,32 +35,35 @@ def survey_json(found: Sequence[SeriesSummary]) -> str:
 
 
 def survey_table(found: Sequence[SeriesSummary]) -> None:
-    """Print the list of series as a table: which can be reported, and why not."""
+    """Print the list of series as a table, then, by the same numbers, each one's UID and why (not)."""
     from rich.console import Console
+    from rich.padding import Padding
     from rich.table import Table
     from rich.text import Text
 
-    console = Console(soft_wrap=False)
+    console = Console(highlight=False)
     if not found:
         console.print("No image series found.")
         return
-    table = Table(box=None, pad_edge=False, header_style="bold", row_styles=("", "dim"))
-    table.add_column("report?", no_wrap=True)
-    table.add_column("series", max_width=30)
-    table.add_column("slices", justify="right")
-    table.add_column("rows × columns", justify="right")
-    table.add_column("spacing mm", justify="right")
-    table.add_column("unit")
-    table.add_column("why", min_width=24)
-    for entry in found:
+    table = Table(box=None, pad_edge=False, padding=(0, 2, 0, 0), header_style="bold")
+    for name in ("", "report?"):
+        table.add_column(name, no_wrap=True)
+    for name in ("slices", "rows × columns", "spacing (mm)"):
+        table.add_column(name, justify="right", no_wrap=True)
+    table.add_column("unit", no_wrap=True)
+    table.add_column("description", no_wrap=True, overflow="ellipsis")
+    for number, entry in enumerate(found, start=1):
         verdict = "recommended" if entry.recommended else "yes" if entry.fit else "no"
         size = f"{entry.shape[1]} × {entry.shape[2]}" if entry.shape else "–"
         spacing = " × ".join(f"{s:.3g}" for s in entry.spacing_mm) if entry.spacing_mm else "–"
-        name = Text.assemble(entry.description or "(no description)", "\n", (entry.uid, "dim"))
-        name.overflow = "ellipsis"
-        reasons = "\n".join(entry.reasons)
-        table.add_row(verdict, name, str(entry.slices), size, spacing, entry.unit or "–", reasons)
+        description = Text(entry.description or "–")
+        table.add_row(str(number), verdict, str(entry.slices), size, spacing, entry.unit or "–", description)
     console.print(table)
+    console.print()
+    for number, entry in enumerate(found, start=1):
+        console.print(Text(f"{number}  {entry.uid}"), soft_wrap=True)
+        for reason in entry.reasons:
+            console.print(Padding(Text(reason), (0, 0, 0, 3)))
 
 
 def closing_lines(case: Case, report: Path, data: Path | None) -> list[str]:
