@@ -35,7 +35,7 @@ def survey_json(found: Sequence[SeriesSummary]) -> str:
 
 
 def survey_table(found: Sequence[SeriesSummary]) -> None:
-    """Print the list of series as a table, then, by the same numbers, each one's UID and why (not)."""
+    """Print the list of series as a table, then, by the same numbers, each one's description, UID and reasons."""
     from rich.console import Console
     from rich.padding import Padding
     from rich.table import Table
@@ -51,17 +51,16 @@ def survey_table(found: Sequence[SeriesSummary]) -> None:
     for name in ("slices", "rows × columns", "spacing (mm)"):
         table.add_column(name, justify="right", no_wrap=True)
     table.add_column("unit", no_wrap=True)
-    table.add_column("description", no_wrap=True, overflow="ellipsis")
     for number, entry in enumerate(found, start=1):
         verdict = "recommended" if entry.recommended else "yes" if entry.fit else "no"
         size = f"{entry.shape[1]} × {entry.shape[2]}" if entry.shape else "–"
         spacing = " × ".join(f"{s:.3g}" for s in entry.spacing_mm) if entry.spacing_mm else "–"
-        description = Text(entry.description or "–")
-        table.add_row(str(number), verdict, str(entry.slices), size, spacing, entry.unit or "–", description)
+        table.add_row(str(number), verdict, str(entry.slices), size, spacing, entry.unit or "–")
     console.print(table)
     console.print()
     for number, entry in enumerate(found, start=1):
-        console.print(Text(f"{number}  {entry.uid}"), soft_wrap=True)
+        console.print(Text(f"{number}  {entry.description or 'no description'}"), soft_wrap=True)
+        console.print(Text(f"   {entry.uid}", style="dim"), soft_wrap=True)
         for reason in entry.reasons:
             console.print(Padding(Text(reason), (0, 0, 0, 3)))
 
