@@ -78,8 +78,6 @@ def check_slices(headers: Sequence[Header]) -> Arrangement:
     InputError : says which file does not fit, and how.
     """
     first = headers[0]
-    if not first.series:
-        raise InputError("Series Instance UID is missing", file=first.source.label, remedy="Export the series again")
     reason = reason_against(headers)
     if reason is not None:
         problem, header = reason

@@ -19,6 +19,10 @@ from tomofolio.intake.padding import Padding
 #: Images wider or higher than this are refused: no detector is, and a damaged header may claim anything.
 LARGEST_MATRIX = 16384
 
+#: Compressed images above this size that would be packed tighter than this are refused: the header lies.
+LARGE_IMAGE_BYTES = 64 << 20
+LARGEST_COMPRESSION = 10000
+
 #: Share of the machine's memory that the stored numbers may take.
 MEMORY_SHARE = 0.8
 
@@ -67,9 +71,12 @@ def check_storage(header: Header) -> None:
         )
     if pixels.offset is None:
         raise InputError("there are no pixel data", file=name, remedy=CUT_SHORT)
-    if pixels.length is None or UID(pixels.transfer_syntax).is_deflated:
-        return
     needed = pixels.rows * pixels.columns * pixels.bits_allocated // 8
+    if pixels.length is None or pixels.transfer_syntax == DeflatedExplicitVRLittleEndian:
+        if needed > LARGE_IMAGE_BYTES and needed > LARGEST_COMPRESSION * header.source.size:
+            problem = f"an image of {pixels.rows} × {pixels.columns} pixels is declared in {header.source.size} bytes"
+            raise InputError(problem, file=name, remedy=CUT_SHORT)
+        return
     there = min(pixels.length, max(header.source.size - pixels.offset, 0))
     if there < needed:
         raise InputError(f"the pixel data end early: {there} of {needed} bytes are there", file=name, remedy=CUT_SHORT)

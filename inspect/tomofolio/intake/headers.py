@@ -77,7 +77,7 @@ class Header:
 
 
 class DamagedError(Exception):
-    """A DICOM object that cannot be parsed."""
+    """A DICOM object that cannot be parsed, or whose header ends before it says which series it belongs to."""
 
 
 def read_header(source: Source) -> Header | None:
@@ -100,7 +100,15 @@ def read_header(source: Source) -> Header | None:
             stream.seek(0)
             dataset = pydicom.dcmread(stream, stop_before_pixels=True, force=True)
             offset, length = _pixel_extent(stream, dataset)
-        return _header(source, dataset, offset, length) if _is_object(dataset, declared) else None
+        sop_class = _sop_class(dataset)
+        if sop_class == MediaStorageDirectoryStorage or not (declared or sop_class):
+            return None
+        header = _header(source, dataset, offset, length)
+        if not header.series:
+            raise DamagedError("Series Instance UID is missing")
+        return header
+    except DamagedError:
+        raise
     except Exception as error:  # a damaged file makes pydicom and zipfile raise almost anything
         reason = " ".join(str(error).split()) or type(error).__name__
         raise DamagedError(reason) from error
@@ -116,11 +124,8 @@ def _looks_like_elements(start: bytes) -> bool:
     return number < 0x2000 and (explicit or length < 1024)
 
 
-def _is_object(dataset: FileDataset, declared: bool) -> bool:
-    sop_class = code(dataset, 0x00080016) or str(dataset.file_meta.get("MediaStorageSOPClassUID", ""))
-    if sop_class == MediaStorageDirectoryStorage:
-        return False
-    return bool(sop_class) or (declared and bool(len(dataset))) or "SeriesInstanceUID" in dataset
+def _sop_class(dataset: FileDataset) -> str:
+    return code(dataset, 0x00080016) or str(dataset.file_meta.get("MediaStorageSOPClassUID", ""))
 
 
 def _pixel_extent(stream: BinaryIO, dataset: FileDataset) -> tuple[int | None, int | None]:
@@ -153,7 +158,7 @@ def _header(source: Source, dataset: FileDataset, offset: int | None, length: in
     centre, width = finite(dataset, 0x00281050), finite(dataset, 0x00281051)
     return Header(
         source=source,
-        sop_class=code(dataset, 0x00080016) or str(dataset.file_meta.get("MediaStorageSOPClassUID", "")),
+        sop_class=_sop_class(dataset),
         sop_instance=code(dataset, 0x00080018),
         patient="\n".join((code(dataset, 0x00100020), code(dataset, 0x00100010))),
         study=code(dataset, 0x0020000D),

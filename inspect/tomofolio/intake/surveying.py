@@ -148,7 +148,7 @@ def _summarise(one: Group, damaged: Sequence[Damaged], damaged_places: set[str])
     spacing = first.pixel_spacing_mm
     if arrangement is not None:
         spacing_mm: tuple[float, float, float] | None = arrangement.grid.spacing_mm
-    elif len(headers) == 1 and first.thickness_mm and spacing and len(spacing) == 2 and min(spacing) > 0:
+    elif has_images and len(headers) == 1 and first.thickness_mm and spacing and len(spacing) == 2 and min(spacing) > 0:
         spacing_mm = (first.thickness_mm, spacing[0], spacing[1])
     else:
         spacing_mm = None
