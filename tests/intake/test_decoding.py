@@ -58,6 +58,30 @@ def test_every_encoding_gives_the_numbers_that_were_written(tmp_path, make_slice
     assert series.acquisition["Transfer syntax"] == syntax.name
 
 
+@pytest.mark.parametrize("compressor", ["JPEG", "JPEG2000"])
+def test_lossless_compression_by_another_writer_gives_the_numbers_that_were_written(
+    tmp_path, make_series, make_stored, compressor
+):
+    # SimpleITK writes JPEG lossless (process 14, selection value 1), the usual one in archives, and JPEG 2000.
+    stored = make_stored(seed=4, shape=(4, 24, 32), low=-1024, high=3000)
+    make_series(tmp_path / "plain", stored)
+    reader, writer = SimpleITK.ImageFileReader(), SimpleITK.ImageFileWriter()
+    writer.KeepOriginalImageUIDOn()
+    writer.SetUseCompression(True)
+    writer.SetCompressor(compressor)
+    for path in sorted((tmp_path / "plain").iterdir()):
+        reader.SetFileName(str(path))
+        reader.LoadPrivateTagsOn()
+        image = reader.Execute()
+        writer.SetFileName(str(tmp_path / path.name))
+        writer.Execute(image)
+    for path in (tmp_path / "plain").iterdir():
+        path.unlink()
+    volume, series = read_series(tmp_path)
+    np.testing.assert_array_equal(volume.values(slice(None)), stored)
+    assert series.acquisition["Transfer syntax"].startswith(compressor.replace("JPEG2000", "JPEG 2000"))
+
+
 @pytest.mark.parametrize(
     ("dtype", "low", "high", "expected"),
     [

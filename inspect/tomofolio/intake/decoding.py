@@ -10,7 +10,14 @@ import numpy as np
 import pydicom
 from numpy.typing import NDArray
 from pydicom.pixels import get_decoder
-from pydicom.uid import UID, DeflatedExplicitVRLittleEndian, ExplicitVRBigEndian
+from pydicom.uid import (
+    UID,
+    DeflatedExplicitVRLittleEndian,
+    ExplicitVRBigEndian,
+    JPEG2000TransferSyntaxes,
+    JPEGLSTransferSyntaxes,
+    RLETransferSyntaxes,
+)
 
 from tomofolio.errors import InputError
 from tomofolio.intake.headers import Header, Pixels
@@ -33,6 +40,13 @@ READERS = 4
 BY_DECODER = (DeflatedExplicitVRLittleEndian, ExplicitVRBigEndian)
 
 CUT_SHORT = "Copy the file again; it was cut short"
+
+#: The fastest decoder for each family of compressions; where it is not installed, pydicom takes any that is.
+FASTEST = {
+    **dict.fromkeys(JPEG2000TransferSyntaxes, "pylibjpeg"),
+    **dict.fromkeys(JPEGLSTransferSyntaxes, "pyjpegls"),
+    **dict.fromkeys(RLETransferSyntaxes, "pylibjpeg"),
+}
 
 
 class _DoesNotFitError(Exception):
@@ -209,7 +223,10 @@ def _read_with_decoder(header: Header) -> NDArray[np.integer]:
     pixels = header.pixels
     with header.source.open() as stream:
         dataset = pydicom.dcmread(stream, force=True)
-    numbers, _ = get_decoder(UID(pixels.transfer_syntax)).as_array(dataset, index=0, raw=True)
+    decoder = get_decoder(UID(pixels.transfer_syntax))
+    fastest = FASTEST.get(UID(pixels.transfer_syntax), "")
+    plugin = fastest if fastest in decoder.available_plugins else ""
+    numbers, _ = decoder.as_array(dataset, index=0, raw=True, decoding_plugin=plugin)
     if numbers.shape != (pixels.rows, pixels.columns):
         raise ValueError(f"{numbers.shape} pixels instead of {(pixels.rows, pixels.columns)}")
     return numbers

@@ -4,9 +4,9 @@ from __future__ import annotations
 
 from threading import Lock
 
+import cc3d
 import numpy as np
 from numpy.typing import NDArray
-from scipy import ndimage
 
 
 class Padding:
@@ -58,22 +58,9 @@ def reached_from_border(mask: NDArray[np.bool_]) -> NDArray[np.bool_] | None:
     """
     if not (mask[0].any() or mask[-1].any() or mask[:, 0].any() or mask[:, -1].any()):
         return None
-    # Outside of a circle everything is seen straight from a side, so that the dearer labelling is seldom needed.
-    seen = _seen_from_sides(mask)
-    if seen.sum() == mask.sum():
-        return seen
-    labels, count = ndimage.label(mask)
-    at_border = np.zeros(count + 1, dtype=bool)
+    labels = cc3d.connected_components(mask, connectivity=4)
+    at_border = np.zeros(int(labels.max()) + 1, dtype=bool)
     for side in (labels[0], labels[-1], labels[:, 0], labels[:, -1]):
         at_border[side] = True
     at_border[0] = False
     return at_border[labels]
-
-
-def _seen_from_sides(mask: NDArray[np.bool_]) -> NDArray[np.bool_]:
-    """The part of a mask from which a straight line inside it leads to the left or right, or up or down."""
-    along = np.logical_and.accumulate
-    seen = along(mask, axis=1) | along(mask[:, ::-1], axis=1)[:, ::-1]
-    seen |= along(mask, axis=0)
-    seen |= along(mask[::-1], axis=0)[::-1]
-    return seen
