@@ -12,16 +12,18 @@ from collections.abc import Iterator
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy import ndimage
 
 from tomofolio.body.material import ATTACHED, DENSE, at_least
 from tomofolio.body.pieces import SUPPORT_LENGTH, Pieces, measure_pieces
 from tomofolio.body.result import Region
 from tomofolio.body.runs import Runs, find_runs, paint
+from tomofolio.body.sheet import mark_touching_sheet
 from tomofolio.ranges.result import Ranges
 from tomofolio.volume import Grid, Volume
 
 #: Slices that are looked at to decide whether there is a support at all; it runs through all of them.
-SLICES_LOOKED_AT = 48
+SLICES_LOOKED_AT = 32
 #: A touching support is at most this thick, compared with the piece that it touches, ...
 ATTACHED_THICKNESS = 0.25
 #: ... and at most this share of its volume.
@@ -39,8 +41,9 @@ MOST_LEVELS = 4
 def mark_attached(volume: Volume, ranges: Ranges, regions: NDArray[np.uint8], pieces: Pieces, main: int) -> bool:
     """Paint supports that touch the object as `material.ATTACHED` in ``regions``.
 
-    At some level above the threshold a piece comes off that reaches from the first slice of the scan to
-    the last, is a sheet much thinner than the main piece, and faces background with nearly all of its surface.
+    By value: at some level above the threshold a piece comes off that reaches from the first slice of the scan to
+    the last, is a sheet much thinner than the main piece, and faces background with most of its surface.
+    By shape: see `sheet.mark_touching_sheet`.
 
     Returns
     -------
@@ -50,7 +53,7 @@ def mark_attached(volume: Volume, ranges: Ranges, regions: NDArray[np.uint8], pi
     found = False
     for level in _levels(ranges):
         found |= _mark_denser(volume, regions, level, looked_at, pieces, main)
-    return found
+    return mark_touching_sheet(regions, volume.grid, looked_at) or found
 
 
 def _levels(ranges: Ranges) -> Iterator[float]:
@@ -168,7 +171,8 @@ def _components_at(runs: Runs, marked: NDArray[np.bool_], looked_at: NDArray) ->
 def _grow_downhill(region: NDArray[np.uint8], stored: NDArray, rising: bool) -> None:
     """Let marked voxels of one slice take over their rim: object voxels of values that fall away from them.
 
-    The values fall to the seam and rise again in the object, so growth ends at the seam.
+    The values fall to the seam and rise again in the object, so growth ends at the seam. Where no background is near
+    the object may follow without a seam (as high as the rim): there only the first voxel is taken.
     """
     there_j, there_i = np.nonzero(region == ATTACHED)
     if not len(there_j):
@@ -176,10 +180,12 @@ def _grow_downhill(region: NDArray[np.uint8], stored: NDArray, rising: bool) -> 
     box = tuple(slice(max(int(a.min()) - SEAM_VOXELS, 0), int(a.max()) + SEAM_VOXELS + 1) for a in (there_j, there_i))
     codes, values = region[box], stored[box].astype(np.float64) * (1 if rising else -1)
     edge = codes == ATTACHED
+    allowed = codes == Region.OBJECT
+    near = ndimage.binary_dilation((codes == Region.OUTSIDE) | (codes == Region.NO_DATA), iterations=2)
     for _ in range(SEAM_VOXELS):
         taken = np.zeros_like(edge)
         for axis, way in ((0, 1), (0, -1), (1, 1), (1, -1)):
             taken |= _shifted(edge, axis, way) & (values < _shifted(values, axis, way))
-        taken &= codes == Region.OBJECT
+        taken &= allowed
         codes[taken] = ATTACHED
-        edge = taken
+        edge, allowed = taken, near & (codes == Region.OBJECT)
