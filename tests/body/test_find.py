@@ -250,3 +250,16 @@ def test_both_arcs_beside_the_head_are_left_out_and_the_head_is_kept(real_scan, 
     out = body.regions == Region.EXCLUDED
     assert out[:, :, 105:405].sum() <= 0.001 * out.sum()
     assert 0.02 < out.sum() / material.sum() < 0.03
+
+
+@pytest.mark.parametrize("slices", [1, 2, 3])
+def test_a_scan_of_few_slices_is_read_without_supports(slices, make_volume, make_ranges):
+    _, j, i = index_grid((slices, 60, 80))
+    body_and_table = (np.hypot(j - 25, i - 40) < 15) | (j >= 50) & (j < 53)
+    body = find_body(make_volume(100.0 * body_and_table), make_ranges(0, 100, boundaries=[50]))
+    np.testing.assert_array_equal(body.regions == Region.OBJECT, body_and_table)
+
+
+def test_a_scan_that_is_all_material_is_object_everywhere(make_volume, make_ranges):
+    body = find_body(make_volume(np.full((9, 20, 30), 100.0)), make_ranges(0, 100, boundaries=[50]))
+    assert (body.regions == Region.OBJECT).all() and body.box == (slice(0, 9), slice(0, 20), slice(0, 30))

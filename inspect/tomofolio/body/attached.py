@@ -174,11 +174,12 @@ def _grow_downhill(region: NDArray[np.uint8], stored: NDArray, rising: bool) -> 
     The values fall to the seam and rise again in the object, so growth ends at the seam. Where no background is near
     the object may follow without a seam (as high as the rim): there only the first voxel is taken.
     """
-    there_j, there_i = np.nonzero(region == ATTACHED)
-    if not len(there_j):
+    marked = region == ATTACHED
+    ends = [np.flatnonzero(marked.any(axis=axis)) for axis in (1, 0)]
+    if not len(ends[0]):
         return
-    box = tuple(slice(max(int(a.min()) - SEAM_VOXELS, 0), int(a.max()) + SEAM_VOXELS + 1) for a in (there_j, there_i))
-    codes, values = region[box], stored[box].astype(np.float64) * (1 if rising else -1)
+    box = tuple(slice(max(int(a[0]) - SEAM_VOXELS, 0), int(a[-1]) + SEAM_VOXELS + 1) for a in ends)
+    codes, values = region[box], stored[box].astype(np.float32) * (1 if rising else -1)
     edge = codes == ATTACHED
     allowed = codes == Region.OBJECT
     near = ndimage.binary_dilation((codes == Region.OUTSIDE) | (codes == Region.NO_DATA), iterations=2)
