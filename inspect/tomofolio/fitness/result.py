@@ -12,11 +12,14 @@ class Fitness:
     """Image quality read off the object itself.
 
     ``noise`` is the standard deviation in the main material after slow trends are taken off, in the scan's unit;
-    ``noise_correlation_mm`` the σ of the Gaussian that fits the noise's autocorrelation per axis [slice, row,
-    column]; ``contrast`` the absolute difference between the peaks of main material and background;
-    ``blur_sigma_axes_mm`` the σ of the Gaussian that fits the edge response along [slice, row, column], and
+    ``noise_correlation_mm`` the σ_f of the Gaussian filter that makes such noise from white noise, per axis [slice,
+    row, column]: the autocorrelation at distance d is exp(−d²/(4·σ_f²)), 0 stands for white noise; ``contrast`` the
+    absolute difference between the peaks of main material and background; ``blur_sigma_axes_mm`` the σ of the
+    Gaussian that fits the whole edge response, the voxel's own width included, along [slice, row, column], and
     ``blur_sigma_mm`` their geometric mean; ``mtf10_per_mm`` the spatial frequency where the modulation transfer
-    function falls to 10 %.
+    function falls to 10 %; ``detectable_diameter_mm`` and ``measurable_diameter_mm`` are theoretical limits for a lone
+    spherical air void: found with 95 % probability at one false call in 10⁸ voxels, and its volume's 95 % interval
+    within ±25 % (see `tomofolio.fitness.limits`).
     """
 
     noise: float | None
