@@ -71,4 +71,6 @@ class Ranges:
     @property
     def main(self) -> ValueRange:
         """The largest range that is not background; the only one of a uniform scan."""
-        return max((item for item in self.items if not item.background), key=lambda r: r.pure_share, default=self.items[0])
+        return max(
+            (item for item in self.items if not item.background), key=lambda r: r.pure_share, default=self.items[0]
+        )
