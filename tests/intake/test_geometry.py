@@ -130,6 +130,20 @@ def test_order_follows_positions_and_not_names_or_instance_numbers(tmp_path, mak
         np.testing.assert_array_equal(volume.stored, stored)
 
 
+def test_nothing_depends_on_the_order_of_files_where_headers_differ_in_the_last_digits(
+    tmp_path, make_slice, save_slice, make_stored
+):
+    stored = make_stored()
+    for folder, names in (("a", "01234"), ("b", "43210")):
+        for k, name in enumerate(names):
+            orientation = (1, 0, 0, 0, 1, 4e-6 * k)
+            save_slice(make_slice(stored[k], k, orientation=orientation, KVP=str(100 + k)), tmp_path / folder / name)
+    one, other = read_series(tmp_path / "a"), read_series(tmp_path / "b")
+    np.testing.assert_array_equal(one[0].grid.direction, other[0].grid.direction)
+    np.testing.assert_array_equal(one[0].stored, other[0].stored)
+    assert one[1] == other[1]
+
+
 def test_slices_off_the_straight_axis_are_refused(tmp_path, make_series, make_stored):
     positions = np.outer(np.arange(5.0), [0, 0, 1])
     positions[2, 0] += 0.5

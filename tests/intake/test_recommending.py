@@ -104,5 +104,5 @@ def test_a_unique_beginning_of_the_uid_chooses_and_others_are_refused_with_the_c
     assert read_series(place.path, "1.2.31.1")[1].uid == "1.2.31.1"  # a whole UID, though another begins with it
     with pytest.raises(InputError, match=r"2 series have a UID that begins with '1\.2\.31'"):
         read_series(place.path, "1.2.31")
-    with pytest.raises(InputError, match=r"no series has a UID that begins with '9'[^~]*1\.2\.30\.1"):
+    with pytest.raises(InputError, match=r"(?s)no series has a UID that begins with '9'.*1\.2\.30\.1"):
         read_series(place.path, "9")

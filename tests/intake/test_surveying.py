@@ -1,6 +1,7 @@
 """Whatever lies below a path is listed; what cannot be used says why."""
 
 import json
+import os
 import shutil
 import warnings
 import zipfile
@@ -98,6 +99,14 @@ def test_zip_is_read_in_place_and_gives_the_same_volume(tmp_path, make_series, m
     np.testing.assert_array_equal(from_zip[0].stored, stored)
     assert from_zip[1] == from_folder[1]
     assert sorted(path.name for path in tmp_path.iterdir()) == ["plain", "scan.zip"]
+
+
+def test_file_names_that_are_no_text_can_be_shown(tmp_path, make_series, make_stored):
+    (path,) = make_series(tmp_path, make_stored(shape=(1, 5, 6)))
+    path.rename(os.fsdecode(os.fsencode(tmp_path) + b"/\xff\n.dcm"))
+    with pytest.raises(InputError, match="single slice") as caught:
+        read_series(tmp_path)
+    assert str(caught.value).encode("utf-8") and "\n" not in str(caught.value)
 
 
 def test_dicomdir_gives_the_files_it_lists(tmp_path, make_series, make_stored):

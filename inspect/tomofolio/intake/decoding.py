@@ -87,11 +87,11 @@ def check_storage(header: Header) -> None:
         raise InputError("there are no pixel data", file=name, remedy=CUT_SHORT)
     needed = pixels.rows * pixels.columns * pixels.bits_allocated // 8
     if pixels.length is None or pixels.transfer_syntax == DeflatedExplicitVRLittleEndian:
-        if needed > LARGE_IMAGE_BYTES and needed > LARGEST_COMPRESSION * header.source.size:
-            problem = f"an image of {pixels.rows} × {pixels.columns} pixels is declared in {header.source.size} bytes"
+        if needed > LARGE_IMAGE_BYTES and needed > LARGEST_COMPRESSION * pixels.file_size:
+            problem = f"an image of {pixels.rows} × {pixels.columns} pixels is declared in {pixels.file_size} bytes"
             raise InputError(problem, file=name, remedy=CUT_SHORT)
         return
-    there = min(pixels.length, max(header.source.size - pixels.offset, 0))
+    there = min(pixels.length, max(pixels.file_size - pixels.offset, 0))
     if there < needed:
         raise InputError(f"the pixel data end early: {there} of {needed} bytes are there", file=name, remedy=CUT_SHORT)
 
@@ -182,9 +182,8 @@ def _fill(plane: NDArray[np.integer], header: Header) -> None:
     except (InputError, MemoryError):
         raise
     except Exception as error:  # decoders raise almost anything
-        reason = " ".join(str(error).split())[:200] or type(error).__name__
         raise InputError(
-            f"the pixel data cannot be decoded ({reason})",
+            f"the pixel data cannot be decoded, they are damaged or no {UID(pixels.transfer_syntax).name}",
             file=header.source.label,
             remedy="Copy the file again, or export the series uncompressed",
         ) from error

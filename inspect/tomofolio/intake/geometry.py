@@ -48,13 +48,14 @@ def arrange(headers: Sequence[Header]) -> Arrangement:
     InputError : positions, orientation or spacing are missing or impossible, two slices are at one place, or the
         origins are not on one straight line.
     """
-    rows_along, columns_along = row_and_column_directions(headers[0])
-    row_spacing, column_spacing = _spacing(headers[0])
     origins = np.array([_position(header) for header in headers])
-    normal = np.cross(rows_along, columns_along)
-    depth = origins @ normal
+    depth = origins @ np.cross(*row_and_column_directions(headers[0]))
     order = np.argsort(depth, kind="stable")
     origins, depth = origins[order], depth[order]
+    # The first slice speaks for all, so that nothing depends on the order in which the files were found.
+    rows_along, columns_along = row_and_column_directions(headers[order[0]])
+    row_spacing, column_spacing = _spacing(headers[order[0]])
+    normal = np.cross(rows_along, columns_along)
     _refuse_double(headers, order, depth, min(row_spacing, column_spacing))
     if len(headers) == 1:
         along, positions = normal, np.zeros(1)

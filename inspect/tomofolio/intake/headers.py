@@ -38,6 +38,7 @@ class Pixels:
     signed: bool
     offset: int | None
     length: int | None
+    file_size: int
     padding: tuple[int, int] | None
 
 
@@ -168,7 +169,7 @@ def _header(source: Source, dataset: FileDataset, offset: int | None, length: in
         modality=code(dataset, 0x00080060),
         description=text(dataset, 0x0008103E),
         image_type=tuple(value.upper() for value in codes(dataset, 0x00080008)),
-        pixels=_pixels(dataset, offset, length),
+        pixels=_pixels(dataset, offset, length, source.size),
         orientation=numbers(dataset, 0x00200037),
         position_mm=numbers(dataset, 0x00200032),
         pixel_spacing_mm=numbers(dataset, 0x00280030),
@@ -189,7 +190,7 @@ def _header(source: Source, dataset: FileDataset, offset: int | None, length: in
     )
 
 
-def _pixels(dataset: FileDataset, offset: int | None, length: int | None) -> Pixels:
+def _pixels(dataset: FileDataset, offset: int | None, length: int | None, file_size: int) -> Pixels:
     signed = whole(dataset, 0x00280103) == 1
     stored = whole(dataset, 0x00280101) or 0
     frames = finite(dataset, 0x00280008)
@@ -210,6 +211,7 @@ def _pixels(dataset: FileDataset, offset: int | None, length: int | None) -> Pix
         signed=signed,
         offset=offset,
         length=length,
+        file_size=file_size,
         padding=None if limits is None else (min(limits), max(limits)),
     )
 

@@ -50,7 +50,7 @@ def read_series(path: Path, uid: str | None = None, *, progress: Fraction | None
         if chosen.arrangement is None:
             raise chosen.refusal or InputError("the series cannot be used", file=path)
         before = len(said)
-        headers = [chosen.headers[k] for k in chosen.arrangement.order]
+        headers = chosen.headers
         stored, no_data = decode(headers, lambda fraction: shown(HEADERS_SHARE + (1 - HEADERS_SHARE) * fraction))
         slope, intercept = rescale_of(headers)
         unit, kind, why = unit_and_kind(headers)
@@ -98,17 +98,13 @@ def choose(found: Sequence[SeriesSummary], uid: str | None, path: Path) -> Serie
     if usable:
         reason = next((text for item in usable for text in item.reasons if text.startswith("Not recommended: ")), "")
         problem = reason.removeprefix("Not recommended: ").rstrip(".") or "several series compete"
-        raise InputError(
-            f"{problem}. The choices:\n{_choices(usable)}\n",
-            file=path,
-            remedy="Name one with --series (the beginning of its UID will do)",
-        )
+        raise InputError(problem, file=path, remedy=f"Name one with --series:\n{_choices(usable)}")
     if len(found) == 1 and found[0].refusal is not None:
         raise found[0].refusal
     raise InputError(
-        f"no report can be made from any of the {len(found)} series:\n{_choices(found)}\n",
+        f"no report can be made from any of the {len(found)} series",
         file=path,
-        remedy="Give the folder that holds a series of CT slices",
+        remedy=f"Give the folder that holds a series of CT slices. Here there are:\n{_choices(found)}",
     )
 
 
@@ -116,15 +112,15 @@ def _by_uid(found: Sequence[SeriesSummary], uid: str, path: Path) -> SeriesSumma
     matching = [item for item in found if item.uid == uid] or [item for item in found if item.uid.startswith(uid)]
     if not matching or not uid:
         raise InputError(
-            f"no series has a UID that begins with {uid!r}. The choices:\n{_choices(found)}\n",
+            f"no series has a UID that begins with {uid!r}",
             file=path,
-            remedy="Name one of these with --series",
+            remedy=f"Name one of these with --series:\n{_choices(found)}",
         )
     if len({item.uid for item in matching}) > 1:
         raise InputError(
-            f"{len(matching)} series have a UID that begins with {uid!r}:\n{_choices(matching)}\n",
+            f"{len(matching)} series have a UID that begins with {uid!r}",
             file=path,
-            remedy="Give more of the UID",
+            remedy=f"Give more of the UID:\n{_choices(matching)}",
         )
     return matching[0]
 
@@ -133,8 +129,9 @@ def _choices(series: Sequence[SeriesSummary]) -> str:
     lines = []
     for item in series:
         size = " × ".join(str(n) for n in item.shape) if item.shape else "no images"
-        reasons = f" – {item.refusal.problem}" if item.refusal is not None else ""
-        lines.append(f"  {item.uid or '(no UID)'}  {item.modality or '–'}  {size}  {item.description}{reasons}")
+        described = f", “{item.description}”" if item.description else ""
+        reason = f": {item.refusal.problem}" if item.refusal is not None else ""
+        lines.append(f"  {item.uid} ({item.modality or 'no modality'}, {size}{described}){reason}")
     return "\n".join(lines)
 
 
@@ -169,9 +166,8 @@ def _value_remarks(unit: Unit, headers: Sequence[Header], kind: Kind) -> list[Re
     for name, get in VARYING.items():
         values = {get(header) for header in headers}
         if len(values) > 1:
-            remarks.append(
-                Remark(f"{name.replace(' ', '-')}-varies", Severity.CAUTION, f"The {name} differs between slices.")
-            )
+            severity = Severity.NOTE if name == "image type" else Severity.CAUTION
+            remarks.append(Remark(f"{name.replace(' ', '-')}-varies", severity, f"The {name} differs between slices."))
     return remarks
 
 

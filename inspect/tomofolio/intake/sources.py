@@ -38,6 +38,11 @@ class Source(Protocol):
         """A seekable stream at its beginning."""
 
 
+def printable(name: str) -> str:
+    """A file name as it can be shown: names may hold control characters, or bytes that are no text."""
+    return "".join(letter if letter.isprintable() else "�" for letter in name)
+
+
 @dataclass(frozen=True)
 class FileSource:
     """A file of the file system."""
@@ -46,7 +51,7 @@ class FileSource:
 
     @property
     def label(self) -> str:
-        return str(self.path)
+        return printable(str(self.path))
 
     @property
     def folder(self) -> str:
@@ -69,11 +74,11 @@ class ZipSource:
 
     @property
     def label(self) -> str:
-        return f"{self.archive.filename}/{self.member.filename}"
+        return printable(f"{self.archive.filename}/{self.member.filename}")
 
     @property
     def folder(self) -> str:
-        return self.label.rpartition("/")[0]
+        return self.member.filename.rpartition("/")[0]
 
     @property
     def size(self) -> int:

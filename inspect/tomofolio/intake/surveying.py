@@ -29,8 +29,8 @@ Fraction = Callable[[float], None]
 class SeriesSummary:
     """One series as the survey lists it. ``shape``, ``spacing_mm`` and ``unit`` are None where they mean nothing.
 
-    ``headers`` and ``arrangement`` (None where unfit) are what reading the series needs; ``refusal`` is why it
-    cannot be read (None where fit).
+    ``headers`` (in slice order where fit) and ``arrangement`` (None where unfit) are what reading the series needs;
+    ``refusal`` is why it cannot be read (None where fit).
     """
 
     uid: str
@@ -64,7 +64,6 @@ class Survey:
     series: tuple[SeriesSummary, ...]
     damaged: tuple[Damaged, ...]
     missing: int
-    looked_at: int
 
 
 def survey(path: Path, *, progress: Fraction | None = None) -> list[SeriesSummary]:
@@ -107,17 +106,18 @@ def look_through(path: Path, progress: Fraction) -> Survey:
                 headers.append(header)
         progress(count / len(found.sources))
     if not headers:
-        raise _nothing_found(path, len(found.sources), damaged)
+        raise _nothing_found(path, found.sources, damaged)
     places = {item.source.folder for item in damaged}
     summaries = [_summarise(one, damaged, places) for one in group(headers)]
-    return Survey(tuple(_with_recommendation(summaries)), tuple(damaged), found.missing, len(found.sources))
+    return Survey(tuple(_with_recommendation(summaries)), tuple(damaged), found.missing)
 
 
 def _ignore(fraction: float) -> None:
     return None
 
 
-def _nothing_found(path: Path, looked_at: int, damaged: Sequence[Damaged]) -> InputError:
+def _nothing_found(path: Path, sources: Sequence[Source], damaged: Sequence[Damaged]) -> InputError:
+    looked_at = len(sources)
     if damaged:
         first = damaged[0]
         more = f", and {len(damaged) - 1} more like it" if len(damaged) > 1 else ""
@@ -128,6 +128,10 @@ def _nothing_found(path: Path, looked_at: int, damaged: Sequence[Damaged]) -> In
         )
     if not looked_at:
         return InputError("there are no files in it", file=path, remedy="Give the folder that holds the DICOM files")
+    packed = [source for source in sources if source.label.lower().endswith(".zip")]
+    if packed and not path.is_file():
+        problem = f"none of the {len(sources)} files is DICOM; zips in a folder are not opened"
+        return InputError(problem, file=path, remedy=f"Give the zip itself, such as {packed[0].label}")
     what = "this is no DICOM file" if path.is_file() and looked_at == 1 else f"none of the {looked_at} files is DICOM"
     return InputError(what, file=path, remedy="Give the folder, zip or DICOMDIR that holds the CT slices")
 
@@ -141,6 +145,8 @@ def _summarise(one: Group, damaged: Sequence[Damaged], damaged_places: set[str])
             raise InputError(one.conflict, file=first.source.label, remedy="Take the files of one scan")
         _refuse_damaged_neighbour(headers, damaged, damaged_places)
         arrangement = check_slices(headers)
+        headers = tuple(headers[k] for k in arrangement.order)
+        first = headers[0]
     except InputError as error:
         refusal = error
     pixels = first.pixels
@@ -186,10 +192,10 @@ def _refuse_damaged_neighbour(headers: Sequence[Header], damaged: Sequence[Damag
 
 def unit_and_kind(headers: Sequence[Header]) -> tuple[Unit, Kind, str]:
     """Unit, kind and the reason for the kind, from all headers of a series."""
-    first = headers[0]
-    calibrated = first.rescale_type.upper() == "HU" or (not first.rescale_type and implies_hu(first))
+    declared = headers[0].rescale_type.upper()
+    calibrated = declared == "HU" or (not declared and all(implies_hu(header) for header in headers))
     kind, why = decide_kind((header.evidence for header in headers), calibrated=calibrated)
-    return decide_unit(first, kind), kind, why
+    return decide_unit(headers, kind), kind, why
 
 
 def _reasons(headers: Sequence[Header], arrangement: Arrangement | None, refusal: InputError | None) -> tuple[str, ...]:

@@ -27,20 +27,20 @@ def implies_hu(header: Header) -> bool:
     )
 
 
-def decide_unit(header: Header, kind: Kind) -> Unit:
-    """The unit of a series, from any of its headers.
+def decide_unit(headers: Sequence[Header], kind: Kind) -> Unit:
+    """The unit of a series.
 
     A declared Rescale Type is believed. Without one, an original CT image is in HU, but never a component's: there
     nobody has calibrated to water. Anything else is a grey value.
     """
-    declared = header.rescale_type
+    declared = headers[0].rescale_type
     if declared.upper() == "HU":
         return Unit("CT number", "HU", Basis.DECLARED)
     if declared.upper() == "US":
         return Unit("grey value", GREY_VALUE, Basis.DECLARED)
     if declared:
         return Unit("other", declared, Basis.DECLARED)
-    if kind is not Kind.COMPONENT and implies_hu(header):
+    if kind is not Kind.COMPONENT and all(implies_hu(header) for header in headers):
         return Unit("CT number", "HU", Basis.IMPLIED)
     return Unit("grey value", GREY_VALUE, Basis.IMPLIED)
 
