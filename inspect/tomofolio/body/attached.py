@@ -34,8 +34,10 @@ EXPOSED_SHARE = 0.65
 SEAM_VOXELS = 4
 #: First level, between the peaks of background (0) and the range above it (1).
 FIRST_LEVEL = 0.75
-#: Levels that are tried at most.
-MOST_LEVELS = 4
+#: Further levels: the boundaries above, and this many standard deviations above each range's peak.
+BEYOND_SPREADS = 3.0
+#: Levels that are tried at most, from the lowest.
+MOST_LEVELS = 6
 
 
 def mark_attached(volume: Volume, ranges: Ranges, regions: NDArray[np.uint8], pieces: Pieces, main: int) -> bool:
@@ -57,15 +59,16 @@ def mark_attached(volume: Volume, ranges: Ranges, regions: NDArray[np.uint8], pi
 
 
 def _levels(ranges: Ranges) -> Iterator[float]:
-    """Levels above the threshold at which bodies may come apart, ascending."""
+    """Levels above the threshold at which bodies may come apart: the highest first, which cuts nearest to the sheet."""
     background = ranges.background
     above = [item for item in ranges.items if background is not None and item.peak > background.peak]
     if background is None or not above:
         return
     first = background.peak + FIRST_LEVEL * (above[0].peak - background.peak)
-    levels = [first, *(item.lower for item in above[1:] if item.lower is not None)]
+    levels = [first, *(item.peak + BEYOND_SPREADS * item.spread for item in above)]
+    levels += [item.lower for item in above[1:] if item.lower is not None]
     threshold = background.upper if background.upper is not None else np.inf
-    yield from sorted(level for level in levels if level > threshold)[:MOST_LEVELS]
+    yield from sorted({level for level in levels if level > threshold})[:MOST_LEVELS][::-1]
 
 
 def _mark_denser(

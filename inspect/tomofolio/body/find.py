@@ -53,9 +53,9 @@ def find_body(volume: Volume, ranges: Ranges) -> Body:
         return Body(regions, (slice(0, 0), slice(0, 0), slice(0, 0)), threshold, (), remarks_about(None, (), volume))
     main = main_piece(pieces)
     if pieces.runs_through(volume.shape[0])[main] and mark_attached(volume, ranges, regions, pieces, main):
-        left_out += _take_off(regions, volume.grid)
-        pieces, more = _sort_pieces(regions, volume.grid)
-        left_out += more
+        supports = _take_off(regions, volume.grid)
+        pieces, remnants = _sort_pieces(regions, volume.grid)
+        left_out += _with_remnants(supports, remnants)
     _close_in(regions)
     left_out = [thing for thing in left_out if regions[thing.voxel] == Region.EXCLUDED]
     assert pieces is not None, "the main piece is never taken off"
@@ -87,6 +87,18 @@ def _take_off(regions: NDArray[np.uint8], grid: Grid) -> list[LeftOut]:
     runs = runs.keep(runs.voxels() >= SMALLEST_PIECE_VOXELS)
     pieces = measure_pieces(runs, grid)
     return _left_out(runs, pieces, np.ones(len(pieces), bool), [Role.SUPPORT] * len(pieces), touches=True)
+
+
+def _with_remnants(supports: list[LeftOut], remnants: list[LeftOut]) -> list[LeftOut]:
+    """Supports with what hung on the object by them alone: each remnant goes to the support nearest to it."""
+    if not supports:
+        return remnants
+    supports = list(supports)
+    for remnant in remnants:
+        away = [float(np.linalg.norm(support.position_mm - remnant.position_mm)) for support in supports]
+        n = int(np.argmin(away))
+        supports[n] = supports[n].joined(remnant)
+    return supports
 
 
 def _left_out(runs: Runs, pieces: Pieces, out: NDArray[np.bool_], roles: list[Role], *, touches: bool) -> list[LeftOut]:

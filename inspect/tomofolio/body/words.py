@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -28,6 +28,12 @@ class LeftOut:
     voxel: tuple[int, int, int]
     volume_mm3: float
     position_mm: NDArray[np.float64]
+
+    def joined(self, other: LeftOut) -> LeftOut:
+        """Both as one thing under this one's name."""
+        whole = self.volume_mm3 + other.volume_mm3
+        centre = (self.volume_mm3 * self.position_mm + other.volume_mm3 * other.position_mm) / whole
+        return replace(self, volume_mm3=whole, position_mm=centre)
 
 
 def excluded_things(left_out: Sequence[LeftOut], object_: Pieces, volume: Volume) -> tuple[Excluded, ...]:
