@@ -15,7 +15,7 @@ from pydicom.uid import (
 
 from tomofolio.intake import read_series
 from tomofolio.intake.decoding import decode
-from tomofolio.intake.headers import read_header
+from tomofolio.intake.headers import read_headers
 from tomofolio.intake.sources import FileSource
 
 
@@ -138,7 +138,7 @@ def test_rescaled_values_agree_with_simpleitk_slice_by_slice(tmp_path, make_seri
 def test_single_slice_of_another_maker_decodes_as_simpleitk_and_pydicom_do(pydicom_files):
     # CT_small.dcm comes with pydicom. One slice is no volume, so the inner path is used.
     path = pydicom_files / "CT_small.dcm"
-    header = read_header(FileSource(path))
+    (header,) = read_headers(FileSource(path))
     stored, _ = decode([header])
     np.testing.assert_array_equal(stored[0], pydicom.dcmread(path).pixel_array)
     values = header.slope * stored[0].astype(float) + header.intercept

@@ -35,7 +35,7 @@ def test_survey_gives_the_fields_of_the_interface(tmp_path, make_series, make_st
         ({"ImageType": ["DERIVED", "SECONDARY", "PROJECTION IMAGE"]}, "projections"),
         ({"SOPClassUID": SecondaryCaptureImageStorage}, "secondary captures"),
         ({"Modality": "MR"}, "modality is MR"),
-        ({"NumberOfFrames": "5"}, "Multi-frame objects are not read yet"),
+        ({"NumberOfFrames": "5"}, "5 frames in an object of a class for single images"),
         ({"PhotometricInterpretation": "PALETTE COLOR"}, "colour"),
     ],
 )

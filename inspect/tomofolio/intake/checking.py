@@ -5,12 +5,12 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 
 import numpy as np
-from pydicom.uid import UID, CTImageStorage, EnhancedCTImageStorage, LegacyConvertedEnhancedCTImageStorage
+from pydicom.uid import UID, CTImageStorage
 
 from tomofolio.errors import InputError
 from tomofolio.intake.decoding import can_decode, check_storage
 from tomofolio.intake.geometry import ORIENTATION_TOLERANCE, Arrangement, arrange
-from tomofolio.intake.headers import Header
+from tomofolio.intake.headers import MULTI_FRAME, Header
 from tomofolio.intake.units import rescale_of
 
 #: Values of Image Type that mean a picture made from the slices, not a slice.
@@ -32,8 +32,6 @@ PROJECTIONS = {
 
 #: Values of Image Type that mean an overview radiograph.
 OVERVIEWS = {"LOCALIZER", "SCOUT", "TOPOGRAM"}
-
-MULTI_FRAME = {EnhancedCTImageStorage, LegacyConvertedEnhancedCTImageStorage}
 
 
 def reason_against(headers: Sequence[Header]) -> tuple[str, Header] | None:
@@ -57,10 +55,10 @@ def _reason_against_one(header: Header) -> str:
         return "these are secondary captures (screen shots or pictures), not slices"
     if header.modality != "CT":
         return f"the modality is {header.modality or 'not recorded'}; only CT is read"
-    if header.sop_class in MULTI_FRAME or pixels.frames > 1:
-        return "multi-frame objects are not read yet"
-    if header.sop_class != CTImageStorage:
-        return f"the objects are of the class {name}; only CT Image Storage is read"
+    if header.sop_class != CTImageStorage and header.sop_class not in MULTI_FRAME:
+        return f"the objects are of the class {name}; only CT images are read"
+    if pixels.frames > 1 and header.sop_class not in MULTI_FRAME:
+        return f"there are {pixels.frames} frames in an object of a class for single images"
     if OVERVIEWS.intersection(header.image_type):
         return "it is or contains a localizer (an overview radiograph)"
     if PROJECTIONS.intersection(header.image_type):

@@ -5,10 +5,13 @@ from __future__ import annotations
 import os
 from collections.abc import Callable, Sequence
 from concurrent.futures import ThreadPoolExecutor
+from dataclasses import replace
+from typing import Any
 
 import numpy as np
 import pydicom
 from numpy.typing import NDArray
+from pydicom.encaps import encapsulate, get_frame
 from pydicom.pixels import get_decoder
 from pydicom.uid import (
     UID,
@@ -22,6 +25,7 @@ from pydicom.uid import (
 from tomofolio.errors import InputError
 from tomofolio.intake.headers import Header, Pixels
 from tomofolio.intake.padding import Padding
+from tomofolio.intake.sources import Source, unpacked
 
 #: Images wider or higher than this are refused: no detector is, and a damaged header may claim anything.
 LARGEST_MATRIX = 16384
@@ -110,6 +114,7 @@ def decode(
     ------
     InputError : a slice cannot be decoded, or the volume does not fit into this machine.
     """
+    headers = _unpack_frames(headers)
     pixels = headers[0].pixels
     shape = (len(headers), pixels.rows, pixels.columns)
     for dtype in _candidates(pixels):
@@ -123,6 +128,17 @@ def decode(
     raise InputError(
         "stored numbers go beyond 32 bits with sign", file=headers[0].source.label, remedy="Export with 16 bits"
     )
+
+
+def _unpack_frames(headers: Sequence[Header]) -> Sequence[Header]:
+    """Frames inside a zip are unpacked together: each by itself would unpack all that is before it."""
+    whole: dict[Source, Source] = {}
+    for source in {header.source for header in headers if header.pixels.frames > 1}:
+        try:
+            whole[source] = unpacked(source)
+        except Exception as error:  # zipfile and zlib raise many kinds
+            raise InputError("the file cannot be unpacked", file=source.label, remedy=CUT_SHORT) from error
+    return [replace(header, source=whole.get(header.source, header.source)) for header in headers]
 
 
 def _ignore(fraction: float) -> None:
@@ -220,15 +236,37 @@ def _without_unused_bits(numbers: NDArray[np.integer], pixels: Pixels) -> NDArra
 def _read_with_decoder(header: Header) -> NDArray[np.integer]:
     """Compressed, deflated or big-endian pixels, by pydicom's decoders."""
     pixels = header.pixels
-    with header.source.open() as stream:
-        dataset = pydicom.dcmread(stream, force=True)
     decoder = get_decoder(UID(pixels.transfer_syntax))
     fastest = FASTEST.get(UID(pixels.transfer_syntax), "")
     plugin = fastest if fastest in decoder.available_plugins else ""
-    numbers, _ = decoder.as_array(dataset, index=0, raw=True, decoding_plugin=plugin)
+    with header.source.open() as stream:
+        if pixels.frames > 1 and pixels.length is None:
+            stream.seek(pixels.offset or 0)
+            frame = get_frame(stream, pixels.frame, number_of_frames=pixels.frames)
+            numbers, _ = decoder.as_array(encapsulate([frame]), decoding_plugin=plugin, **_described(pixels))
+        else:
+            dataset = pydicom.dcmread(stream, force=True)
+            numbers, _ = decoder.as_array(dataset, index=pixels.frame, raw=True, decoding_plugin=plugin)
     if numbers.shape != (pixels.rows, pixels.columns):
         raise ValueError(f"{numbers.shape} pixels instead of {(pixels.rows, pixels.columns)}")
     return numbers
+
+
+def _described(pixels: Pixels) -> dict[str, Any]:
+    """One frame, in the words of pydicom's decoders."""
+    return {
+        "index": 0,
+        "raw": True,
+        "rows": pixels.rows,
+        "columns": pixels.columns,
+        "samples_per_pixel": 1,
+        "number_of_frames": 1,
+        "photometric_interpretation": pixels.photometric,
+        "bits_allocated": pixels.bits_allocated,
+        "bits_stored": pixels.bits_stored,
+        "pixel_representation": int(pixels.signed),
+        "pixel_keyword": "PixelData",
+    }
 
 
 def _put(plane: NDArray[np.integer], numbers: NDArray[np.integer]) -> None:

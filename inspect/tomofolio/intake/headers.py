@@ -8,9 +8,16 @@ from typing import BinaryIO
 
 import pydicom
 from pydicom.dataset import FileDataset
-from pydicom.uid import UID, ImplicitVRLittleEndian, MediaStorageDirectoryStorage
+from pydicom.uid import (
+    UID,
+    EnhancedCTImageStorage,
+    ImplicitVRLittleEndian,
+    LegacyConvertedEnhancedCTImageStorage,
+    MediaStorageDirectoryStorage,
+)
 
 from tomofolio.intake.elements import code, codes, finite, number, numbers, text, whole
+from tomofolio.intake.frames import frame_headers
 from tomofolio.intake.kind import Evidence, gather_evidence
 from tomofolio.intake.sources import Source
 
@@ -20,10 +27,11 @@ FLOAT_PIXEL_DATA = (0x7FE00008, 0x7FE00009)
 
 @dataclass(frozen=True, slots=True)
 class Pixels:
-    """How the numbers of one object are stored. ``offset``, ``length`` of the value in the file, in bytes.
+    """How the numbers of one object are stored.
 
-    ``length`` is None where the data are encapsulated (compressed); ``offset`` is None where there are none.
-    ``padding`` is the lowest and highest stored number that stands for "no data".
+    ``offset``, ``length`` of the value in the file are in bytes; ``length`` is None where the data are encapsulated
+    (compressed), ``offset`` where there are none. ``frame`` is the place among the ``frames`` of a multi-frame
+    object. ``padding`` is the lowest and highest stored number that stands for "no data".
     """
 
     transfer_syntax: str
@@ -40,6 +48,7 @@ class Pixels:
     length: int | None
     file_size: int
     padding: tuple[int, int] | None
+    frame: int = 0
 
 
 @dataclass(frozen=True, slots=True)
@@ -77,16 +86,21 @@ class Header:
     evidence: Evidence
 
 
+#: Multi-frame classes whose frames are read as slices.
+MULTI_FRAME = (EnhancedCTImageStorage, LegacyConvertedEnhancedCTImageStorage)
+
+
 class DamagedError(Exception):
     """A DICOM object that cannot be parsed, or whose header ends before it says which series it belongs to."""
 
 
-def read_header(source: Source) -> Header | None:
-    """Read one header, without its pixels.
+def read_headers(source: Source) -> list[Header]:
+    """Read the header of one object, without its pixels.
 
     Returns
     -------
-    None where the source is no DICOM object, or a DICOMDIR.
+    One header, or one for each frame of a multi-frame CT object; none where the source is no DICOM object, or is a
+    DICOMDIR.
 
     Raises
     ------
@@ -97,17 +111,17 @@ def read_header(source: Source) -> Header | None:
             start = stream.read(132)
             declared = start[128:] == b"DICM"
             if not declared and not _looks_like_elements(start):
-                return None
+                return []
             stream.seek(0)
             dataset = pydicom.dcmread(stream, stop_before_pixels=True, force=True)
             offset, length = _pixel_extent(stream, dataset)
         sop_class = _sop_class(dataset)
         if sop_class == MediaStorageDirectoryStorage or not (declared or sop_class):
-            return None
+            return []
         header = _header(source, dataset, offset, length)
         if not header.series:
             raise DamagedError("Series Instance UID is missing")
-        return header
+        return frame_headers(header, dataset) if sop_class in MULTI_FRAME else [header]
     except DamagedError:
         raise
     except Exception as error:  # a damaged file makes pydicom and zipfile raise almost anything

@@ -76,7 +76,7 @@ def read_series(path: Path, uid: str | None = None, *, progress: Fraction | None
             inverted_display=middle.pixels.photometric == "MONOCHROME1",
             identity=identity(full, kind),
             acquisition=acquisition(full, headers),
-            files=len(headers),
+            files=len({header.source for header in headers}),
             remarks=tuple(remarks),
         )
     return volume, series

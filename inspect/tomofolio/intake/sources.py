@@ -89,6 +89,30 @@ class ZipSource:
         return io.BufferedReader(self.archive.open(self.member), buffer_size=1 << 16)  # type: ignore[type-var]
 
 
+@dataclass(frozen=True)
+class MemorySource:
+    """A source whose bytes have been read whole."""
+
+    label: str
+    folder: str
+    data: bytes = field(repr=False)
+
+    @property
+    def size(self) -> int:
+        return len(self.data)
+
+    def open(self) -> BinaryIO:
+        return io.BytesIO(self.data)
+
+
+def unpacked(source: Source) -> Source:
+    """The same source, unpacked into memory where it is in a zip: for jumping about in it."""
+    if not isinstance(source, ZipSource):
+        return source
+    with source.open() as stream:
+        return MemorySource(source.label, source.folder, stream.read())
+
+
 def open_zip(path: Path) -> list[Source]:
     """The members of a zip, sorted by name.
 

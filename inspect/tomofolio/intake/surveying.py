@@ -14,7 +14,7 @@ from tomofolio.intake.finding import find_sources
 from tomofolio.intake.gaps import missing_slices
 from tomofolio.intake.geometry import Arrangement
 from tomofolio.intake.grouping import Group, group
-from tomofolio.intake.headers import DamagedError, Header, read_header
+from tomofolio.intake.headers import DamagedError, Header, read_headers
 from tomofolio.intake.kind import decide_kind
 from tomofolio.intake.quiet import quiet_pydicom
 from tomofolio.intake.recommending import Candidate, is_original, recommend
@@ -98,12 +98,9 @@ def look_through(path: Path, progress: Fraction) -> Survey:
     damaged: list[Damaged] = []
     for count, source in enumerate(found.sources, start=1):
         try:
-            header = read_header(source)
+            headers += read_headers(source)
         except DamagedError as error:
             damaged.append(Damaged(source, str(error)))
-        else:
-            if header is not None:
-                headers.append(header)
         progress(count / len(found.sources))
     if not headers:
         raise _nothing_found(path, found.sources, damaged)
