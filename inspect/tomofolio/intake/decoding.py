@@ -45,11 +45,12 @@ BY_DECODER = (DeflatedExplicitVRLittleEndian, ExplicitVRBigEndian)
 
 CUT_SHORT = "Copy the file again; it was cut short"
 
-#: The fastest decoder for each family of compressions; where it is not installed, pydicom takes any that is.
-FASTEST = {
+#: The decoder for each family of compressions; where it is not installed, pydicom takes any that is. The fastest one,
+#: but not pylibjpeg for RLE: on damaged data it panics past Python's exceptions and writes to the terminal.
+PREFERRED = {
     **dict.fromkeys(JPEG2000TransferSyntaxes, "pylibjpeg"),
     **dict.fromkeys(JPEGLSTransferSyntaxes, "pyjpegls"),
-    **dict.fromkeys(RLETransferSyntaxes, "pylibjpeg"),
+    **dict.fromkeys(RLETransferSyntaxes, "pydicom"),
 }
 
 
@@ -237,8 +238,8 @@ def _read_with_decoder(header: Header) -> NDArray[np.integer]:
     """Compressed, deflated or big-endian pixels, by pydicom's decoders."""
     pixels = header.pixels
     decoder = get_decoder(UID(pixels.transfer_syntax))
-    fastest = FASTEST.get(UID(pixels.transfer_syntax), "")
-    plugin = fastest if fastest in decoder.available_plugins else ""
+    preferred = PREFERRED.get(UID(pixels.transfer_syntax), "")
+    plugin = preferred if preferred in decoder.available_plugins else ""
     with header.source.open() as stream:
         if pixels.frames > 1 and pixels.length is None:
             stream.seek(pixels.offset or 0)
