@@ -74,6 +74,15 @@ def test_display_facts_are_kept(series):
     assert series.files == 5
 
 
+def test_control_characters_never_reach_a_text(tmp_path, make_series, make_stored):
+    odd = {"ConvolutionKernel": "A\x07\x1b[31mB", "RescaleType": "X\x01Y", "Manufacturer": "M\nN"}
+    make_series(tmp_path, make_stored(), **odd)
+    volume, series = read_series(tmp_path)
+    assert series.acquisition["Kernel"] == "A  [31mB"
+    assert volume.unit.symbol == "X Y"
+    assert series.acquisition["Manufacturer"] == "M N"
+
+
 @pytest.mark.parametrize(
     ("charset", "encoded", "expected"),
     [

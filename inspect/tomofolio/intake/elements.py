@@ -24,11 +24,11 @@ def codes(header: Dataset, tag: int) -> tuple[str, ...]:
         return ()
     value = element.value
     if isinstance(element, RawDataElement):
-        values = value.decode("latin-1").replace("\0", " ").split("\\")
+        values = _printable(value.decode("latin-1")).split("\\")
     elif isinstance(value, MultiValue | list | tuple):
-        values = [str(part) for part in value]
+        values = [_printable(str(part)) for part in value]
     else:
-        values = [str(value)]
+        values = [_printable(str(value))]
     values = [part.strip() for part in values]
     return tuple(values) if any(values) else ()
 
@@ -103,8 +103,13 @@ def text(header: Dataset, tag: int) -> str:
         joined = ", ".join(_plain(part) for part in value)
     else:
         joined = _plain(value)
-    line = " ".join("".join(letter if letter.isprintable() else " " for letter in joined).split())
+    line = " ".join(_printable(joined).split())
     return line if len(line) <= TEXT_LIMIT else line[: TEXT_LIMIT - 1] + "…"
+
+
+def _printable(text: str) -> str:
+    """Control characters become spaces."""
+    return text if text.isprintable() else "".join(letter if letter.isprintable() else " " for letter in text)
 
 
 def _plain(value: object) -> str:

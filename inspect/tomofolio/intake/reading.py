@@ -52,6 +52,7 @@ def read_series(path: Path, uid: str | None = None, *, progress: Fraction | None
         before = len(said)
         headers = chosen.headers
         stored, no_data = decode(headers, lambda fraction: shown(HEADERS_SHARE + (1 - HEADERS_SHARE) * fraction))
+        decoders_said = said[before:]
         slope, intercept = rescale_of(headers)
         unit, kind, why = unit_and_kind(headers)
         volume = Volume(stored, slope, intercept, chosen.arrangement.grid, unit, no_data)
@@ -61,7 +62,7 @@ def read_series(path: Path, uid: str | None = None, *, progress: Fraction | None
         remarks = [
             *gap_remarks(volume.grid, thickness.pop() if len(thickness) == 1 else None),
             *_value_remarks(unit, headers, kind),
-            *_file_remarks(found, said[before:]),
+            *_file_remarks(found, decoders_said),
         ]
         series = Series(
             uid=chosen.uid,
