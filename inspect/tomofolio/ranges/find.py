@@ -82,7 +82,7 @@ def find_ranges(volume: Volume, *, names: Sequence[str] = (), named_by: str = ""
     edges = np.append(centres - axis.width / 2, centres[-1] + axis.width / 2)
     expected = model.shares(edges) * census.counts.sum()
     histogram = Histogram(centres, census.counts, axis.width)
-    remarks = remarks_about(settled, model, boundaries, volume.unit)
+    remarks = remarks_about(settled, peaks, model, boundaries, volume.unit)
     return Ranges(tuple(items), histogram, expected, remarks)
 
 

@@ -20,7 +20,7 @@ SAMPLE_VOXELS = 1 << 21
 #: Blocks of neighbouring slices (and rows) that are counted apart, for the bootstrap.
 BLOCKS = 16
 #: Uniform places are looked for at no more than about so many voxels.
-LOOKED_AT_VOXELS = 1 << 25
+LOOKED_AT_VOXELS = 1 << 24
 #: Step between the levels of uniformity: two levels double the difference allowed.
 LEVEL_STEP = 2.0**0.5
 #: The border is read from at most so many slices.

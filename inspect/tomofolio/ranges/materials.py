@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from tomofolio.ranges.histogram import Census
 from tomofolio.ranges.mixture import Mixture
-from tomofolio.ranges.peaks import Peak, emptiest_between, places_near
+from tomofolio.ranges.peaks import VALLEY, Peak, emptiest_between, places_near
 
 Array = NDArray[np.float64]
 
@@ -67,7 +67,7 @@ def settle(census: Census, peaks: list[Peak], model: Mixture) -> Settled:
         groups, background = _leave_padding(groups, background, census, model)
         groups = _join_below(groups, background, model)
         groups = _join_packing(groups, census, peaks, model)
-    groups = _join_continuum(groups, census, model)
+    groups = _join_continuum(groups, census, peaks, model)
     groups = _join_uneven(groups, census, peaks, model, background is not None)
     while len(groups) > MOST_RANGES:
         groups = _drop_smallest(groups, model)
@@ -138,7 +138,7 @@ def _join_packing(groups: list[Group], census: Census, peaks: list[Peak], model:
     return groups
 
 
-def _join_continuum(groups: list[Group], census: Census, model: Mixture) -> list[Group]:
+def _join_continuum(groups: list[Group], census: Census, peaks: list[Peak], model: Mixture) -> list[Group]:
     """The uppermost peaks, with far more voxels between them than in them, are one material of varying value.
 
     Only the uppermost: between others the mixed voxels of third materials lie too.
@@ -146,7 +146,7 @@ def _join_continuum(groups: list[Group], census: Census, model: Mixture) -> list
     centres, counts = census.axis.centres, census.counts / max(1, census.counts.sum())
     while len(groups) > 2:
         a, b = groups[-2].members[-1], groups[-1].members[0]
-        low, high = model.mean[a] + 3 * model.spread[a], model.mean[b] - 3 * model.spread[b]
+        low, high = peaks[a].value + 3 * peaks[a].spread, peaks[b].value - 3 * peaks[b].spread
         between = counts[(centres > low) & (centres < high)].sum()
         pure = model.weight[list(groups[-2].members)].sum() + model.weight[list(groups[-1].members)].sum()
         if between <= CONTINUUM_RATIO * pure:
@@ -169,7 +169,7 @@ def _join_uneven(
         distance = model.mean[b] - model.mean[a]
         near = background and g > 0 and distance < UNEVEN_SHARE * (model.mean[b] - air)
         clear = distance > CLEAR * (peaks[a].spread + peaks[b].spread)
-        if near or (clear and emptiest_between(peaks[a], peaks[b], census) > EMPTY):
+        if near or emptiest_between(peaks[a], peaks[b], census) > (EMPTY if clear else VALLEY):
             lead = a if model.weight[a] >= model.weight[b] else b
             groups = [*groups[:g], _joined(groups[g], groups[g + 1], lead, "uneven"), *groups[g + 2 :]]
         else:

@@ -3,7 +3,7 @@
 A voxel that holds two materials has any value between them. With every proportion between p and q equally likely, and
 normal noise, its density is (Φ((v − a) / s_a) − Φ((v − b) / s_b)) / (b − a), a and b being the values at p and q.
 One such step from 0 to 1 is the published model. A blurred edge is steepest in its middle, so proportions near 0 and 1
-are more frequent; they are taken from a Gaussian blur, in six steps. With one step the tails of the edges go
+are more frequent; they are taken from a Gaussian blur, in four steps. With one step the tails of the edges go
 to the peaks, which are drawn towards each other.
 
 References
@@ -33,9 +33,14 @@ FITTED_BINS = 600
 WIDEST = 3.0
 #: A material without noise (cleared air, saturation) is given this standard deviation, in bins.
 SMALLEST_SPREAD = 0.125
+#: A material's mean stays within this part of that standard deviation around the mean at uniform places.
+DRIFT = 0.5
+#: A peak in which the stored values end is at least this part as wide as seen in means over seven voxels, so that it
+#: does not shrink to the spike at the end.
+CUT_NARROWEST = 0.7
 #: Proportions between which a mixed voxel's proportion is equally likely, all steps alike: how a straight edge with a
 #: Gaussian blur passes through them on its way from -2 to 2 σ, where 2 % at either end count as pure.
-PROPORTIONS = ndtr(np.linspace(-2.0, 2.0, 7))
+PROPORTIONS = ndtr(np.linspace(-2.0, 2.0, 5))
 PROPORTIONS[[0, -1]] = 0.0, 1.0
 #: The densities of mixed voxels follow means and spreads every so many steps.
 FOLLOWED_EVERY = 10
@@ -133,16 +138,17 @@ class Frame:
 def frame_of(peaks: list[Peak], axis: ValueAxis) -> Frame:
     """The frame that the peaks seen at uniform places give.
 
-    A material keeps to its half of the way to its neighbours, so that none takes over another's peak, and has at
+    A material keeps near the mean seen there, so that none takes over another's peak, and has at
     least the voxels that were seen to be pure: a plateau of mixed voxels alone could take them over.
     """
     value = np.array([p.value for p in peaks])
     middle = (value[1:] + value[:-1]) / 2
-    narrowest = np.full(len(peaks), SMALLEST_SPREAD * axis.width)
-    widest = np.array([max(WIDEST * p.reach, axis.width / 2) for p in peaks])
+    narrowest = np.array([max(CUT_NARROWEST * p.spread if p.cut else 0.0, SMALLEST_SPREAD * axis.width) for p in peaks])
+    widest = np.array([max(WIDEST * p.spread, axis.width / 2) for p in peaks])
+    drift = np.array([max(DRIFT * p.spread, axis.width / 2) for p in peaks])
     return Frame(
-        lowest=np.maximum(np.concatenate(([-np.inf], middle)), value - widest),
-        highest=np.minimum(np.concatenate((middle, [np.inf])), value + widest),
+        lowest=np.maximum(np.concatenate(([-np.inf], middle)), value - drift),
+        highest=np.minimum(np.concatenate((middle, [np.inf])), value + drift),
         narrowest=narrowest,
         widest=widest,
         least=np.array([p.share for p in peaks]),

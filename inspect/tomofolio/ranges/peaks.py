@@ -35,13 +35,21 @@ STRICTEST_SHARE = 0.02
 TAIL = 5.0
 #: ... unless it holds this share of the other's places.
 TAIL_SHARE = 0.05
-#: A spike within so many spreads of a peak with so many times its places is the peak's tail, cut off.
-CUT_REACH = 4.0
+#: At most so many peaks are kept, those with the most places.
+MOST_PEAKS = 10
+#: A spike so many spreads (from, to) beside a peak with so many times its places is the peak's tail, cut off.
+CUT_AWAY, CUT_REACH = 0.7, 4.0
 CUT_PLACES = 3.0
+#: Values pile up at an end of the scan when the last bin holds so many times the mean of so many bins beside it.
+PILE_HEIGHT, PILE_BINS = 5.0, 8
+#: Where values end in a peak, strict levels see the end alone; laxer ones are needed for it.
+CUT_LIMIT = 1.0
 #: Peaks are comparable where the rarer has this share of the other's places.
 COMPARABLE = 0.1
-#: Standard deviation of the part of a normal density above half its height, in its own standard deviation.
-SPREAD_ABOVE_HALF = 0.6187
+#: Width at half height of a normal density, in standard deviations.
+WIDTH_AT_HALF = 2.3548
+#: From this share of a smoothed peak's width on the kernel hides the peak's own, which is taken from the counts.
+WIDE_KERNEL = 0.7
 #: The kernel that smooths a level, as a share of the difference that the level allows.
 SMOOTHING = 0.25
 
@@ -50,9 +58,10 @@ SMOOTHING = 0.25
 class Peak:
     """A material seen at uniform places.
 
-    ``low`` and ``high`` are where the peak falls to `VALLEY` of its height, ``places`` the uniform places it holds at
-    the level ``limit`` where it was first seen, ``share`` the share of all voxels that are seen to be pure at the
-    level ``share_limit``, ``reach`` the spread at the laxest level that still shows the peak apart from others.
+    ``low`` and ``high`` are where the peak falls to `VALLEY` of its height, ``places`` the uniform places it holds,
+    ``limit`` the level where it was first seen, ``share`` the share of all voxels that are seen to be pure at the
+    level ``share_limit``, ``cut`` whether the stored values end in the peak, ``shape`` its standard deviation / the
+    one that its width at half height gives: 1 for a normal density, less for a flat top.
     """
 
     value: float
@@ -63,7 +72,8 @@ class Peak:
     limit: float
     share: float = 0.0
     share_limit: float = 0.0
-    reach: float = 0.0
+    cut: bool = False
+    shape: float = 1.0
 
 
 def find_peaks(census: Census) -> list[Peak]:
@@ -73,16 +83,36 @@ def find_peaks(census: Census) -> list[Peak]:
     start = held[0] + STRICTEST_SHARE * (held[-1] - held[0])
     levels = [_peaks_of(census, n) if not n or held[n] >= start else [] for n in range(len(held))]
     for peak in (p for level in levels for p in sorted(level, key=lambda p: -p.places)):
-        others = [p for p in found if not _is_cut_tail(p, peak, census.axis.width)]
+        others = [p for p in found if not _is_cut_tail(p, peak, found, census)]
         if _is_new(peak, others):
+            peak = replace(peak, cut=len(others) < len(found))
             found = sorted([*others, peak], key=lambda p: p.value)
+    found = _marked_where_cut(found, census)
+    found = sorted(sorted(found, key=lambda p: -p.places)[:MOST_PEAKS], key=lambda p: p.value)
     return [_completed(p, found, levels, census) for p in found] or [_whole(census)]
 
 
-def _is_cut_tail(spike: Peak, peak: Peak, width: float) -> bool:
+def _is_cut_tail(spike: Peak, peak: Peak, found: list[Peak], census: Census) -> bool:
     """Whether a spike is the tail of a peak, cut off where the stored values end, and not a material of its own."""
-    beside = abs(spike.value - peak.value) <= CUT_REACH * peak.spread + width
-    return spike.spread < width <= peak.spread and beside and peak.places > CUT_PLACES * spike.places
+    near = min((abs(p.value - peak.value) for p in found if p is not spike), default=np.inf)
+    if not spike.spread < census.axis.width <= peak.spread or peak.limit > BETWEEN_LIMIT * near:
+        return False
+    away = CUT_AWAY * peak.spread <= abs(spike.value - peak.value) <= CUT_REACH * peak.spread
+    return away and peak.places > CUT_PLACES * places_near(spike, census, peak.limit)
+
+
+def _marked_where_cut(found: list[Peak], census: Census) -> list[Peak]:
+    """The lowest and the highest peak marked as cut where the values pile up at that end of the scan."""
+    used = np.flatnonzero(census.counts)
+    marked = list(found)
+    for n, step in ((0, 1), (-1, -1)):
+        if not found or len(used) <= PILE_BINS or found[n].spread < census.axis.width:
+            continue
+        end = int(used[n])
+        beside = census.counts[end + step : end + step * (PILE_BINS + 1) : step]
+        if beside.min() > 0 and census.counts[end] > PILE_HEIGHT * beside.mean():
+            marked[n] = replace(marked[n], cut=True)
+    return marked
 
 
 def _is_new(peak: Peak, found: list[Peak]) -> bool:
@@ -103,16 +133,32 @@ def _is_new(peak: Peak, found: list[Peak]) -> bool:
 
 
 def _completed(peak: Peak, found: list[Peak], levels: list[list[Peak]], census: Census) -> Peak:
-    """The peak with its share (of voxels that are uniform for its distance to its neighbours) and its reach."""
+    """The peak as the laxest level shows it that is still strict for its distance to its neighbours.
+
+    More places give a surer value than those of the level where the peak was first seen.
+    """
     others = [p.value for p in found if p is not peak]
     near = min((abs(value - peak.value) for value in others), default=np.inf)
-    limit = max(peak.limit, BETWEEN_LIMIT * near)
-    reach = peak.spread
+    limit = max(peak.limit, (CUT_LIMIT if peak.cut else BETWEEN_LIMIT) * near)
+    best = peak
     for p in (p for level in levels for p in level):
-        if p.low <= peak.value <= p.high and not any(p.low <= value <= p.high for value in others):
-            reach = max(reach, p.spread)
-    share = places_near(peak, census, limit) / max(1, census.looked_at)
-    return replace(peak, share=share, share_limit=limit, reach=reach)
+        alone = p.low <= peak.value <= p.high and not any(p.low <= value <= p.high for value in others)
+        if alone and peak.limit < p.limit <= limit:
+            best = replace(p, cut=peak.cut)
+    share = places_near(best, census, limit) / max(1, census.looked_at)
+    shape = _shape(best, census, max(best.limit, peak.limit))
+    return replace(best, limit=peak.limit, share=share, share_limit=limit, shape=shape)
+
+
+def _shape(peak: Peak, census: Census, limit: float) -> float:
+    """Standard deviation of the places around a peak / the one that its width gives: 1 if normal, 0.7 if flat."""
+    centres = census.axis.centres
+    near = np.abs(centres - peak.value) <= 3 * peak.spread
+    counts = census.uniform[np.searchsorted(census.limits, limit * (1 + 1e-9), side="right") - 1][near]
+    if peak.spread < 2 * census.axis.width or counts.sum() <= 0:
+        return 1.0
+    mean = np.average(centres[near], weights=counts)
+    return float(np.sqrt(np.average((centres[near] - mean) ** 2, weights=counts)) / peak.spread)
 
 
 def places_near(peak: Peak, census: Census, limit: float) -> float:
@@ -129,11 +175,11 @@ def emptiest_between(a: Peak, b: Peak, census: Census) -> float:
     slowly from one end of the scan to the other has uniform places at all values between. 0 where that cannot be seen,
     since the one is too rare beside the other's tail or the noise too large.
     """
-    limit = max(a.limit, b.limit)
+    limit = BETWEEN_LIMIT * abs(b.value - a.value)
     places = [places_near(p, census, limit) for p in (a, b)]
-    if limit > BETWEEN_LIMIT * abs(b.value - a.value) or min(places) < COMPARABLE * max(places):
+    if limit < max(a.limit, b.limit) or min(places) < COMPARABLE * max(places):
         return 0.0
-    level = int(np.argmax(census.limits >= limit))
+    level = int(np.searchsorted(census.limits, limit, side="right")) - 1
     smooth = _smoothed(census, level)
     centres = census.axis.centres
     heights = [smooth[(centres >= p.low) & (centres <= p.high)].max(initial=0.0) for p in (a, b)]
@@ -141,9 +187,30 @@ def emptiest_between(a: Peak, b: Peak, census: Census) -> float:
     return float(middle.min() / max(min(heights), 1e-300)) if middle.size else 1.0
 
 
+def _kernel(census: Census, level: int) -> float:
+    """Standard deviation of the kernel that smooths a level, in the unit of the values."""
+    return max(census.axis.width, SMOOTHING * float(census.limits[level]))
+
+
 def _smoothed(census: Census, level: int) -> Array:
-    kernel = max(1.0, SMOOTHING * float(census.limits[level]) / census.axis.width)
-    return gaussian_filter1d(census.uniform[level].astype(np.float64), kernel, mode="constant", truncate=4)
+    sigma = _kernel(census, level) / census.axis.width
+    return gaussian_filter1d(census.uniform[level].astype(np.float64), sigma, mode="constant", truncate=4)
+
+
+def _half_height(curve: Array, top: int) -> tuple[float, float]:
+    """Where a curve falls to half of its height at ``top``, left and right of it, between bins."""
+    half = curve[top] / 2
+    left, right = top, top
+    while left > 0 and curve[left - 1] >= half:
+        left -= 1
+    while right < len(curve) - 1 and curve[right + 1] >= half:
+        right += 1
+    start, stop = float(left), float(right)
+    if left > 0:
+        start -= (curve[left] - half) / (curve[left] - curve[left - 1])
+    if right < len(curve) - 1:
+        stop += (curve[right] - half) / (curve[right] - curve[right + 1])
+    return start, stop
 
 
 def _peaks_of(census: Census, level: int) -> list[Peak]:
@@ -152,20 +219,22 @@ def _peaks_of(census: Census, level: int) -> list[Peak]:
     counts = census.uniform[level].astype(np.float64)
     if counts.sum() < FEWEST_PLACES:
         return []
-    smooth = _smoothed(census, level)
+    smooth, kernel = _smoothed(census, level), _kernel(census, level)
     fewest = max(FEWEST_PLACES, SMALLEST_SHARE * counts.sum())
     peaks = []
     for top, first, last in prominent(smooth, VALLEY):
         places = counts[first : last + 1].sum()
         if places < fewest:
             continue
-        half = smooth >= VALLEY * smooth[top]
-        start = top - int(np.argmin(half[top::-1])) if not half[: top + 1].all() else -1
-        stop = top + int(np.argmin(half[top:])) if not half[top:].all() else len(half)
-        near = slice(start + 1, stop)
-        centres, weight = axis.centres[near], counts[near]
-        value = float(np.average(centres, weights=weight))
-        spread = float(np.sqrt(np.average((centres - value) ** 2, weights=weight))) / SPREAD_ABOVE_HALF
+        start, stop = _half_height(smooth, top)
+        near = slice(int(np.ceil(start)), int(np.floor(stop)) + 1)
+        centres = axis.centres[near]
+        value = float(np.average(centres, weights=np.maximum(counts[near], 1e-9)))
+        width = (stop - start) * axis.width / WIDTH_AT_HALF
+        if kernel < WIDE_KERNEL * width:
+            spread = float(np.sqrt(width**2 - kernel**2))
+        else:
+            spread = float(np.sqrt(np.average((centres - value) ** 2, weights=np.maximum(counts[near], 1e-9))))
         peaks.append(Peak(value, spread, float(places), float(centres[0]), float(centres[-1]), limit))
     return peaks
 
@@ -206,4 +275,4 @@ def _whole(census: Census) -> Peak:
         return Peak(middle, 0.0, 0.0, middle, middle, 0.0)
     value = float(np.average(centres, weights=counts))
     spread = float(np.sqrt(np.average((centres - value) ** 2, weights=counts)))
-    return Peak(value, spread, float(counts.sum()), float(centres[0]), float(centres[-1]), 0.0, reach=spread)
+    return Peak(value, spread, float(counts.sum()), float(centres[0]), float(centres[-1]), 0.0)

@@ -8,14 +8,19 @@ from scipy.special import ndtr
 
 from tomofolio.ranges.materials import Settled
 from tomofolio.ranges.mixture import Mixture
+from tomofolio.ranges.peaks import Peak
 from tomofolio.remarks import Remark, Severity
 from tomofolio.volume import Unit
 
+#: A peak is flat when its standard deviation is less than this part of what a normal density with its top has.
+FLAT = 0.85
 #: From this share of the smaller material's voxels on the wrong side, two ranges overlap.
 OVERLAP = 0.05
 
 
-def remarks_about(settled: Settled, model: Mixture, boundaries: NDArray[np.float64], unit: Unit) -> tuple[Remark, ...]:
+def remarks_about(
+    settled: Settled, peaks_seen: list[Peak], model: Mixture, boundaries: NDArray[np.float64], unit: Unit
+) -> tuple[Remark, ...]:
     """Remarks on ranges that overlap, were joined, or have no peak of their own."""
     remarks = []
     if len(settled.groups) == 1:
@@ -41,6 +46,9 @@ def remarks_about(settled: Settled, model: Mixture, boundaries: NDArray[np.float
         elif group.reason == "many":
             text = f"{name} holds a smaller peak (at {peaks}) that is not reported as a range of its own."
             remarks.append(Remark("ranges-many", Severity.NOTE, text))
+        if peaks_seen[group.lead].shape < FLAT and group.reason != "continuum":
+            text = f"The peak of {name} is flat: uneven values, or two materials too near each other to be told apart."
+            remarks.append(Remark("ranges-flat-peak", Severity.NOTE, text))
     for n, boundary in enumerate(boundaries):
         a, b = settled.groups[n].lead, settled.groups[n + 1].lead
         smaller = max(min(model.weight[a], model.weight[b]), 1e-12)
