@@ -21,13 +21,15 @@ _SHARE = 1e-3
 class Clipping:
     """Shares (0 to 1) that lie at the ends of the stored numbers: of the object high up, of the outside low down.
 
-    ``cleared`` says whether the outside has no spread at all; ``step`` is the distance between neighbouring values
-    in the unit of the scan.
+    ``cleared`` says whether the outside has no spread at all, ``cut`` up to which value it was then cleared (the
+    background's value itself where nothing is missing), as a share of the way to the main material; ``step`` is the
+    distance between neighbouring values in the unit of the scan.
     """
 
     high: float
     low: float
     cleared: bool
+    cut: float
     step: float
 
 
@@ -48,7 +50,21 @@ def find_clipping(volume: Volume, ranges: Ranges, body: Body) -> Clipping:
     high, low = _piled(solid, highest, step, slope), _piled(air, lowest, step, slope)
     background = ranges.background
     cleared = background is not None and len(air) > 0 and _is_cleared(air, background.spread)
-    return Clipping(high, low, cleared, step)
+    cut = _cut(air * slope + float(np.median(volume.intercept)), ranges) if cleared else 0.0
+    return Clipping(high, low, cleared, cut, step)
+
+
+def _cut(air: NDArray, ranges: Ranges) -> float:
+    """How far up the values were cleared, as a share of the way from background to main material.
+
+    The values near the object's edges start again above the level of clearing: read as the 2nd percentile of those
+    that differ from the cleared value.
+    """
+    assert ranges.background is not None
+    height = ranges.main.peak - ranges.background.peak
+    share = (air - np.median(air)) / height
+    left = share[np.abs(share) > 1e-6]
+    return float(np.clip(np.percentile(left, 2), 0, 1)) if len(left) >= 50 and height != 0 else 0.0
 
 
 def _piled(stored: NDArray, end: float, step: float, slope: float) -> float:
@@ -62,9 +78,9 @@ def _piled(stored: NDArray, end: float, step: float, slope: float) -> float:
 
 
 def _is_cleared(air: NDArray, spread: float) -> bool:
-    """More than 95 % of the air away from the object has one value."""
+    """Whether nearly all of the air has one value; what is left is the foot of the object's edges."""
     values, counts = np.unique(air, return_counts=True)
-    return spread == 0 or bool(counts.max() > 0.95 * len(air)) or (len(values) == 1)
+    return spread == 0 or bool(counts.max() > 0.8 * len(air)) or (len(values) == 1)
 
 
 @dataclass(frozen=True)
@@ -135,7 +151,7 @@ class Cupping:
     error: float
 
 
-def find_cupping(volume: Volume, ranges: Ranges, body: Body, margin_mm: float) -> Cupping | None:
+def find_cupping(volume: Volume, ranges: Ranges, body: Body, margin_mm: float, step: float) -> Cupping | None:
     """Trend of the main material with its depth below the outer surface, measured in the plane of the slices.
 
     A parabola in depth is fitted to medians over shells; for a round body with a parabolic dip that is exact. None
@@ -144,6 +160,7 @@ def find_cupping(volume: Volume, ranges: Ranges, body: Body, margin_mm: float) -
     Parameters
     ----------
     margin_mm : depth to stay away from the surface, where blur still shows.
+    step : distance between neighbouring values.
     """
     from scipy.ndimage import distance_transform_edt
 
@@ -183,12 +200,16 @@ def find_cupping(volume: Volume, ranges: Ranges, body: Body, margin_mm: float) -
         if len(part) >= 25:
             at.append(float(np.mean(depth[shell == n])))
             middle.append(float(np.median(part)))
-            error.append(1.2533 * float(np.std(part)) / np.sqrt(len(part)) + 1e-9)
+            # 1.2533: a median scatters more than a mean; it cannot be known better than the values' own step allows.
+            error.append(1.2533 * float(np.std(part)) / np.sqrt(len(part)) + 0.3 * step)
     if len(at) < 5:
         return None
     x, weight = np.array(at) / deepest, 1 / np.array(error)
     design = np.stack((np.ones_like(x), x, x * x), axis=1) * weight[:, None]
     fitted, *_ = np.linalg.lstsq(design, np.array(middle) * weight, rcond=None)
-    covariance = np.linalg.pinv(design.T @ design)
-    contrast = np.array([0.0, -1.0, -1.0])
-    return Cupping(float(contrast @ fitted), float(np.sqrt(contrast @ covariance @ contrast)))
+    misfit = float(np.sum((design @ fitted - np.array(middle) * weight) ** 2)) / (len(x) - 3)
+    covariance = np.linalg.pinv(design.T @ design) * max(1.0, misfit)
+    # Up to the surface only where the margin is a small part of the depth; else a parabola would be stretched too far.
+    start = 0.0 if deepest > 5 * margin_mm else margin_mm / deepest
+    span = np.array([0.0, start - 1.0, start**2 - 1.0])
+    return Cupping(float(span @ fitted), float(np.sqrt(span @ covariance @ span)))

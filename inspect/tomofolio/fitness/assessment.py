@@ -46,12 +46,12 @@ def assess(volume: Volume, ranges: Ranges, body: Body) -> Fitness:
         blur = measure_blur(volume, body, contrast, noise.correlation if noise is not None else (0.0, 0.0, 0.0))
     blur_mm = None if blur is None else blur.mean_mm
     margin = 4 * float(np.sqrt(volume.grid.row_spacing_mm * volume.grid.column_spacing_mm))
-    cupping = find_cupping(volume, ranges, body, max(margin, 3 * (blur_mm or 0)))
+    cupping = find_cupping(volume, ranges, body, max(margin, 3 * (blur_mm or 0)), clipping.step)
     detectable, measurable = _limits(volume.grid, noise, blur, cnr)
     spacing = volume.grid.spacing_mm
     remarks: list[Remark] = [
         *about_noise(noise, contrast, cnr, clipping.step),
-        *about_blur(blur, contrast, clipping.cleared, volume.grid),
+        *about_blur(blur, contrast, clipping, volume.grid),
         *about_artefacts(clipping, find_truncation(volume, body), cupping, contrast),
         *about_geometry(volume.grid, body),
         *about_limits(detectable, measurable, cnr, blur),

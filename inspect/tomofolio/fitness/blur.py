@@ -38,6 +38,8 @@ FEWEST_EDGES = 12
 #: An axis counts as measured when its σ² is known to this share of itself, and the blur as a whole when the geometric
 #: mean of the σ is (one standard deviation).
 _LARGEST_AXIS_ERROR, _LARGEST_ERROR = 0.2, 0.1
+#: Up to this ratio of its sides a voxel is near enough to a cube for one axis to be judged by the others.
+_NEARLY_CUBIC = 1.6
 #: What is expected before a look at the values (one standard deviation), so that noise is not mistaken for shape:
 #: curvature, in pixels⁻¹; trend of the level, in steps per pixel; difference between the axes' σ², in their mean.
 _CURVATURE, _TREND, _UNLIKE = 1 / 16, 0.02, 0.3
@@ -170,8 +172,21 @@ class _EdgeFit:
         self.local[:, 0] = offset
 
     def plausible_planes(self) -> NDArray[np.bool_]:
-        """Planes that pass near the middle of their boxes."""
-        return np.abs(self.local[:, 0]) <= 2.5 * self._voxel()
+        """Planes that pass near the middle of their boxes and part what is object from what is outside.
+
+        Voxels on the wrong side of the plane, by more than the sag of a surface with a radius of eight pixels,
+        show corners and neighbouring walls; noise puts some there too, alike for all planes.
+        """
+        voxel = self._voxel()
+        position, side = self.patches.position, self.patches.side
+        t = np.matmul(position, self.normal[..., None])[..., 0] - self.local[:, :1]
+        across = np.maximum(np.einsum("pvx,pvx->pv", position, position) - t * t, 0)
+        beyond = np.abs(t) > 1.5 * voxel[:, None] + across / (16 * self.pixel)
+        near = across <= (1.25 * ball_radius(self.grid)) ** 2
+        counted = beyond & near & (side != 0)
+        wrong = np.sum(counted & ((side > 0) != (t > 0)), axis=1) / np.maximum(counted.sum(axis=1), 1)
+        good = wrong <= np.median(wrong) + 0.015
+        return good & (np.abs(self.local[:, 0]) <= 2.5 * voxel)
 
     def choose_voxels(self) -> None:
         """Voxels to fit: within 4 σ of the edge (at least three, at most six voxels), and near in the plane."""
@@ -217,7 +232,8 @@ class _EdgeFit:
         mixture = self._mixture()
         now = mixture @ self.squares
         self.own = now + score / information
-        self.weight = information / doubt
+        # Weights must not follow the noise in a patch's own height and residual, or the mean leans one way.
+        self.weight = information * (np.median(height) / np.maximum(height, 1e-12)) ** 2 / np.median(doubt)
         squares = np.clip(self._solve(mixture, robust), 0.25 * self.squares, 4 * self.squares)
         self.squares = np.clip(squares, (0.2 * self.spacing) ** 2, (6 * self.spacing) ** 2)
         update = solved[..., 1] - solved[..., 0] * (mixture @ self.squares - now)[:, None]
@@ -309,6 +325,9 @@ class _EdgeFit:
         measured &= self.squares > (0.25 * self.spacing) ** 2
         edges = int(np.count_nonzero(self.used > 0))
         if edges < FEWEST_EDGES or error > _LARGEST_ERROR:
+            return None
+        # What the other axes show says nothing about slices that lie far apart.
+        if not measured.all() and self.spacing.max() > _NEARLY_CUBIC * self.spacing.min():
             return None
         axes = np.sqrt(self.squares)
         return Blur(

@@ -29,13 +29,15 @@ class Patches:
     position : shape (patches, voxels, 3), mm from the middle voxel.
     value : shape (patches, voxels), float64.
     usable : shape (patches, voxels), False beyond the scan, in excluded things and where there is no data.
+    side : shape (patches, voxels), int8: 1 object, −1 outside, 0 anything else.
     air, material : shape (patches,), medians of the outside and of the object voxels: where the levels start.
-    outwards : shape (patches, 3), unit vectors that point into the material, first estimate.
+    inwards : shape (patches, 3), unit vectors that point into the material, first estimate.
     """
 
     position: Array
     value: Array
     usable: NDArray[np.bool_]
+    side: NDArray[np.int8]
     air: Array
     material: Array
     inwards: Array
@@ -120,6 +122,7 @@ def _flatten(grid: Grid, boxes: Boxes, half: list[int]) -> Patches:
     value = boxes.values.reshape(patches, -1).astype(np.float64)
     labels = boxes.labels.reshape(patches, -1)
     usable = (labels != BEYOND) & (labels != Region.EXCLUDED) & (labels != Region.NO_DATA)
+    side = (labels == Region.OBJECT).astype(np.int8) - (labels == Region.OUTSIDE)
     air, material = np.zeros(patches), np.zeros(patches)
     for n in range(patches):
         air[n] = np.median(value[n][labels[n] == Region.OUTSIDE])
@@ -139,7 +142,7 @@ def _flatten(grid: Grid, boxes: Boxes, half: list[int]) -> Patches:
     length = np.linalg.norm(gradient, axis=1)
     inwards = gradient / np.maximum(length, 1e-12)[:, None]
     good = (length > 1e-9) & (material != air) & (np.mean(labels == Region.EXCLUDED, axis=1) < 0.02)
-    return Patches(position, value, usable, air, material, inwards).take(good)
+    return Patches(position, value, usable, side, air, material, inwards).take(good)
 
 
 def ball_radius(grid: Grid) -> float:

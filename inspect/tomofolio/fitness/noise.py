@@ -21,6 +21,8 @@ from tomofolio.volume import Volume
 _BLOCK = 16
 _BLOCKS = 224
 _BATCH = 32
+#: So many blocks' worth of main material are enough; thin walls need more blocks for it.
+_ENOUGH = 96
 #: A block with fewer usable voxels than this cannot carry a trend of ten terms.
 _FEWEST_VOXELS = 150
 #: Local means and single voxels that stray further than this many standard deviations are voids or inclusions.
@@ -96,7 +98,8 @@ def _choose_blocks(volume: Volume, body: Body, main: ValueRange, shape: tuple[in
     enough = np.flatnonzero(share > 0.15)
     order = enough[hashed_order(grid[enough])]
     order = order[np.argsort(-np.minimum(np.round(share[order] * 8), 7), kind="stable")]
-    return grid[order[:_BLOCKS]]
+    enough_voxels = int(np.searchsorted(np.cumsum(share[order]), _ENOUGH)) + 1
+    return grid[order[: min(_BLOCKS, enough_voxels)]]
 
 
 def _within(values: NDArray, main: ValueRange) -> NDArray[np.bool_]:

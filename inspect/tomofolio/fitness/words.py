@@ -39,7 +39,7 @@ def about_noise(noise: Noise | None, contrast: float | None, cnr: float | None, 
 def about_blur(
     blur: Blur | None,
     contrast: float | None,
-    cleared: bool,
+    clipping: Clipping,
     grid: Grid,
 ) -> list[Remark]:
     """How far the blur can be relied on."""
@@ -59,7 +59,7 @@ def about_blur(
             f"Few edges of the object face the {' and '.join(names)} direction; the blur along it is largely assumed."
         )
         remarks.append(Remark("blur-axis-assumed", _NOTE, text))
-    if cleared:
+    if clipping.cut > 0.03:
         text = "The foot of every edge is cut off with the cleared background, so the blur may come out too small."
         remarks.append(Remark("blur-edges-cut", _CAUTION, text))
     return remarks
