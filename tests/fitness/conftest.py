@@ -35,12 +35,13 @@ def grid_of(shape, spacing=(1.0, 1.0, 1.0), direction=None, positions=None):
     return Grid(np.array([-7.0, 11.0, 3.0]), direction, spacing[1], spacing[2], positions, shape[1], shape[2])
 
 
-def drawn(grid, signed_distance, blur, fine=3):
+def drawn(grid, signed_distance, blur):
     """The shape blurred by a Gaussian of ``blur`` voxels per axis and averaged over every voxel's box.
 
-    Drawn on voxels ``fine`` times finer per axis, so that the blur is that of a continuous Gaussian.
+    Drawn on voxels two or three times finer per axis, so that the blur is that of a continuous Gaussian.
     Signed distance in mm from the grid's centre, > 0 inside. Even slice gaps only.
     """
+    fine = 2 if np.min(blur) >= 0.8 else 3
     steps = [((np.arange(n * fine) + 0.5) / fine - 0.5).astype(np.float32) for n in grid.shape]
     to_mm = grid.to_mm(np.eye(3)) - grid.to_mm(np.zeros(3))
     middle = (np.array(grid.shape) - 1) / 2

@@ -1,5 +1,7 @@
 """Blur of the edge response against closed form: total σ² = Gaussian blur σ² + voxel width² / 12, per axis."""
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
 
@@ -65,3 +67,11 @@ def test_no_blur_where_thick_slices_have_no_edges(phantoms):
 def test_an_object_of_a_few_voxels_has_no_blur(phantoms):
     phantom = phantoms.make(phantoms.grid_of((30, 30, 30)), phantoms.sphere(2), blur=0.8, cnr=20, seed=22)
     assert measure_blur(phantom.volume, phantom.body, 10000.0, (0.0, 0.0, 0.0)) is None
+
+
+def test_edges_whose_foot_was_cleared_still_give_the_blur(phantoms):
+    phantom = phantoms.make(phantoms.grid_of((56, 56, 56)), phantoms.sphere(20), blur=0.8, cnr=20, seed=24)
+    stored = np.where(phantom.volume.stored < 3000, 1000, phantom.volume.stored).astype(np.int16)
+    volume = replace(phantom.volume, stored=stored)
+    blur = measure_blur(volume, phantom.body, 10000.0, (0.0, 0.0, 0.0), 1000.0)
+    assert blur.mean_mm == pytest.approx(phantom.blur_mm[0], rel=0.08)

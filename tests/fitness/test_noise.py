@@ -18,13 +18,13 @@ CASES = {
 @pytest.mark.parametrize("name", CASES)
 def test_noise_and_its_correlation_are_those_put_in(phantoms, name):
     kind, cnr, correlation, cupping, seed = CASES[name]
-    grid = phantoms.grid_of((64, 64, 64))
+    grid = phantoms.grid_of((56, 56, 56))
     if kind == "box":
-        shape = phantoms.box((20, 18, 21), phantoms.rotation(seed))
+        shape = phantoms.box((18, 17, 18), phantoms.rotation(seed))
     elif kind == "cylinder":
-        shape = phantoms.cylinder(17, 25)
+        shape = phantoms.cylinder(17, 22)
     elif kind == "ribs":
-        shape = phantoms.ribs((25, 25, 22), 13, 26, phantoms.rotation(seed))
+        shape = phantoms.ribs((22, 22, 20), 13, 26, phantoms.rotation(seed))
     else:
         grid = phantoms.grid_of((32, 80, 80), (0.8, 0.3, 0.3))
         shape = phantoms.sphere(10.5)
@@ -41,7 +41,7 @@ def test_noise_and_its_correlation_are_those_put_in(phantoms, name):
 
 
 def test_small_voids_and_inclusions_do_not_count_as_noise(phantoms):
-    grid = phantoms.grid_of((64, 64, 64))
+    grid = phantoms.grid_of((56, 56, 56))
     solid = phantoms.box((22, 22, 22))
 
     def pierced(x):
@@ -56,7 +56,7 @@ def test_small_voids_and_inclusions_do_not_count_as_noise(phantoms):
 
 def test_correlation_differs_between_axes(phantoms):
     phantom = phantoms.make(
-        phantoms.grid_of((64, 64, 64)), phantoms.box((24, 24, 24)), cnr=10, correlation=(0.0, 0.7, 1.1), seed=13
+        phantoms.grid_of((56, 56, 56)), phantoms.box((24, 24, 24)), cnr=10, correlation=(0.0, 0.7, 1.1), seed=13
     )
     noise = measure_noise(phantom.volume, phantom.body, phantom.ranges.main)
     assert noise.sd == pytest.approx(phantom.noise, rel=0.05)

@@ -21,14 +21,14 @@ _SHARE = 1e-3
 class Clipping:
     """Shares (0 to 1) that lie at the ends of the stored numbers: of the object high up, of the outside low down.
 
-    ``cleared`` says whether the outside has no spread at all, ``cut`` up to which value it was then cleared (the
-    background's value itself where nothing is missing), as a share of the way to the main material; ``step`` is the
-    distance between neighbouring values in the unit of the scan.
+    ``cleared`` is the one value of an outside that has no spread (else None), ``cut`` up to where it was cleared, as
+    a share of the way from there to the main material (0 where nothing is missing); ``step`` is the distance between
+    neighbouring values in the unit of the scan.
     """
 
     high: float
     low: float
-    cleared: bool
+    cleared: float | None
     cut: float
     step: float
 
@@ -48,10 +48,11 @@ def find_clipping(volume: Volume, ranges: Ranges, body: Body) -> Clipping:
     if slope < 0:
         lowest, highest = highest, lowest
     high, low = _piled(solid, highest, step, slope), _piled(air, lowest, step, slope)
-    background = ranges.background
-    cleared = background is not None and len(air) > 0 and _is_cleared(air, background.spread)
-    cut = _cut(air * slope + float(np.median(volume.intercept)), ranges) if cleared else 0.0
-    return Clipping(high, low, cleared, cut, step)
+    offset = float(np.median(volume.intercept))
+    fill = _fill_value(air) if ranges.background is not None and len(air) else None
+    if fill is None:
+        return Clipping(high, low, None, 0.0, step)
+    return Clipping(high, low, fill * slope + offset, _cut(air * slope + offset, ranges), step)
 
 
 def _cut(air: NDArray, ranges: Ranges) -> float:
@@ -77,10 +78,10 @@ def _piled(stored: NDArray, end: float, step: float, slope: float) -> float:
     return there / len(stored) if there > _PILE * max(near / 10, 2.0) and there / len(stored) > _SHARE else 0.0
 
 
-def _is_cleared(air: NDArray, spread: float) -> bool:
-    """Whether nearly all of the air has one value; what is left is the foot of the object's edges."""
+def _fill_value(air: NDArray) -> float | None:
+    """The value of nearly all of the air, where there is one; what is left is the foot of the object's edges."""
     values, counts = np.unique(air, return_counts=True)
-    return spread == 0 or bool(counts.max() > 0.8 * len(air)) or (len(values) == 1)
+    return float(values[np.argmax(counts)]) if counts.max() > 0.8 * len(air) else None
 
 
 @dataclass(frozen=True)

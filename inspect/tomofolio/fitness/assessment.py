@@ -11,6 +11,7 @@ from tomofolio.fitness.limits import SphereLimits
 from tomofolio.fitness.noise import Noise, measure_noise
 from tomofolio.fitness.result import Fitness
 from tomofolio.fitness.words import (
+    EDGES_CUT,
     about_artefacts,
     about_blur,
     about_geometry,
@@ -43,7 +44,8 @@ def assess(volume: Volume, ranges: Ranges, body: Body) -> Fitness:
     clipping = find_clipping(volume, ranges, body)
     blur = None
     if contrast:
-        blur = measure_blur(volume, body, contrast, noise.correlation if noise is not None else (0.0, 0.0, 0.0))
+        correlation = noise.correlation if noise is not None else (0.0, 0.0, 0.0)
+        blur = measure_blur(volume, body, contrast, correlation, clipping.cleared if clipping.cut > EDGES_CUT else None)
     blur_mm = None if blur is None else blur.mean_mm
     margin = 4 * float(np.sqrt(volume.grid.row_spacing_mm * volume.grid.column_spacing_mm))
     cupping = find_cupping(volume, ranges, body, max(margin, 3 * (blur_mm or 0)), clipping.step)

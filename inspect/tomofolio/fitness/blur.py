@@ -22,7 +22,7 @@ adds h²/12 to σ²).
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -71,7 +71,11 @@ class Blur:
 
 
 def measure_blur(
-    volume: Volume, body: Body, contrast: float, noise_correlation: tuple[float, float, float]
+    volume: Volume,
+    body: Body,
+    contrast: float,
+    noise_correlation: tuple[float, float, float],
+    cleared: float | None = None,
 ) -> Blur | None:
     """Blur along the three axes of the grid; None where there are too few clean edges or they disagree.
 
@@ -79,17 +83,21 @@ def measure_blur(
     ----------
     contrast : difference between material and background that a whole edge is expected to have, in the scan's unit.
     noise_correlation : σ of the filter that makes the noise from white noise, [slice, row, column], in voxels.
+    cleared : value that everything faint was set to, where that was done. The foot of the edges is missing then: these
+        voxels are left out, and the edges are held to start from this value.
     """
     patches = surface_patches(volume, body)
     if len(patches) < FEWEST_EDGES:
         return None
     # Noise that hangs together is worth fewer voxels: the sum of its autocorrelation says how many count as one.
     together = float(np.prod([max(1.0, 2 * np.sqrt(np.pi) * sigma) for sigma in noise_correlation]))
-    fit = _EdgeFit(volume.grid, patches, together)
+    fit = _EdgeFit(volume.grid, patches, together, cleared is not None)
     fit.settle_planes()
     fit.keep(fit.plausible_planes())
     if len(fit.patches) < FEWEST_EDGES:
         return None
+    if cleared is not None:
+        fit.leave_out(cleared)
     fit.choose_voxels()
     for _ in range(3):
         fit.step(robust=False)
@@ -106,10 +114,11 @@ def measure_blur(
 class _EdgeFit:
     """State of the common fit: local parameters per patch, σ² per axis for all."""
 
-    def __init__(self, grid: Grid, patches: Patches, together: float) -> None:
+    def __init__(self, grid: Grid, patches: Patches, together: float, hold_air: bool) -> None:
         self.grid = grid
         self.patches = patches
         self.together = together
+        self.hold_air = hold_air
         self.pixel = float(np.sqrt(grid.row_spacing_mm * grid.column_spacing_mm))
         self.spacing = np.array(grid.spacing_mm)
         self.axes = np.stack((grid.direction[:, 2], grid.direction[:, 1], grid.direction[:, 0]))
@@ -131,6 +140,13 @@ class _EdgeFit:
         self.patches = self.patches.take(which)
         for name in ("normal", "local", "rms", "pattern", "own", "weight", "used"):
             setattr(self, name, getattr(self, name)[which])
+
+    def leave_out(self, cleared: float) -> None:
+        """Set aside the voxels that hold the cleared value."""
+        tolerance = 1e-6 * np.abs(self.local[:, 7:8])
+        kept = self.patches.usable & (np.abs(self.patches.value - cleared) > tolerance)
+        self.patches = replace(self.patches, usable=kept)
+        self.local[:, 6] = cleared
 
     def _mixture(self) -> Array:
         """Shape (patches, 3): what each axis' σ² counts for along the normals."""
@@ -222,9 +238,14 @@ class _EdgeFit:
         ties = np.zeros((len(gram), 9))
         ties[:, 3:6] = (doubt / (_CURVATURE / self.pixel) ** 2)[:, None]
         ties[:, 8] = doubt / (_TREND * height / self.pixel) ** 2
+        if self.hold_air:
+            ties[:, 6] = 1e4 * gram[:, 6, 6]
         inner = gram[:, :9, :9].copy()
         inner[:, np.arange(9), np.arange(9)] += ties + 1e-9 * np.einsum("pxx->px", inner) + 1e-12
-        pull[:, :9] -= ties * self.local
+        expected = np.zeros_like(self.local)
+        if self.hold_air:
+            expected[:, 6] = self.local[:, 6]
+        pull[:, :9] -= ties * (self.local - expected)
         side = gram[:, :9, 9]
         solved = np.linalg.solve(inner, np.stack((side, pull[:, :9]), axis=2))
         information = np.maximum(gram[:, 9, 9] - np.einsum("px,px->p", side, solved[..., 0]), 1e-30)

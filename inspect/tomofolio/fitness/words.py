@@ -13,6 +13,8 @@ _NOTE, _CAUTION, _STOP = Severity.NOTE, Severity.CAUTION, Severity.STOP
 
 #: Common practice, no source: below this contrast-to-noise ratio single voxels cannot be told apart.
 _LOW_CNR = 5.0
+#: Share of the contrast up to which a background may be cleared without harm to the edges.
+EDGES_CUT = 0.07
 
 
 def about_noise(noise: Noise | None, contrast: float | None, cnr: float | None, step: float) -> list[Remark]:
@@ -59,8 +61,8 @@ def about_blur(
             f"Few edges of the object face the {' and '.join(names)} direction; the blur along it is largely assumed."
         )
         remarks.append(Remark("blur-axis-assumed", _NOTE, text))
-    if clipping.cut > 0.03:
-        text = "The foot of every edge is cut off with the cleared background, so the blur may come out too small."
+    if clipping.cut > EDGES_CUT:
+        text = "The foot of every edge went with the cleared background; the blur rests on what is left of the edges."
         remarks.append(Remark("blur-edges-cut", _CAUTION, text))
     return remarks
 
@@ -70,7 +72,7 @@ def about_artefacts(
 ) -> list[Remark]:
     """Clipping, truncation and cupping."""
     remarks = []
-    if clipping.cleared:
+    if clipping.cleared is not None:
         text = "The background has one single value: it was cleared before, and noise in air cannot be judged."
         remarks.append(Remark("background-cleared", _NOTE, text))
     elif clipping.low > 0:
