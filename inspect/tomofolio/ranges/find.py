@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -10,14 +11,17 @@ from numpy.typing import NDArray
 from tomofolio.errors import CallError
 from tomofolio.ranges.boundaries import find_boundaries, jackknife_half_widths
 from tomofolio.ranges.histogram import Census, take_census
-from tomofolio.ranges.materials import Group, settle
-from tomofolio.ranges.mixture import Mixture, fit, fitted_bins, frame_of, raise_least, start_from
+from tomofolio.ranges.materials import Group, Settled, settle
+from tomofolio.ranges.mixture import Bins, Frame, Mixture, fit, fitted_bins, frame_of, raise_least, start_from
 from tomofolio.ranges.peaks import Peak, find_peaks
 from tomofolio.ranges.result import Histogram, Interval, Ranges, ValueRange
 from tomofolio.ranges.words import remarks_about
 from tomofolio.volume import Unit, Volume
 
 Array = NDArray[np.float64]
+
+#: Two-sided 95 % of a normal distribution.
+COVERAGE_95 = 1.96
 
 
 def find_ranges(volume: Volume, *, names: Sequence[str] = (), named_by: str = "") -> Ranges:
@@ -46,7 +50,8 @@ def find_ranges(volume: Volume, *, names: Sequence[str] = (), named_by: str = ""
     frame = raise_least(frame, model, peaks, census)
     model = fit(counts, bins.edges, model, frame)
     settled = settle(census, peaks, model)
-    boundaries = find_boundaries(model, settled, counts, bins.edges)
+    seen = _at_uniform_places(model, peaks)
+    boundaries = find_boundaries(seen, settled, counts, bins.edges)
     if names and len(names) != len(settled.groups):
         raise CallError(
             _wrong_number(len(names), [model.mean[g.lead] for g in settled.groups], volume.unit),
@@ -54,14 +59,11 @@ def find_ranges(volume: Volume, *, names: Sequence[str] = (), named_by: str = ""
         )
     intervals: list[Interval] = []
     if len(boundaries):
-        drawn = jackknife_half_widths(census, bins, model, frame, settled)
-        seen = _seen_at_uniform_places(model, peaks)
-        doubt = np.abs(find_boundaries(seen, settled, counts, bins.edges) - boundaries)
-        half = np.sqrt(drawn**2 + doubt**2 + axis.width**2 / 12)
+        half = _half_widths(census, bins, model, frame, settled, peaks, boundaries)
         intervals = [(float(b - h), float(b + h)) for b, h in zip(boundaries, half, strict=True)]
     items = []
     for n, group in enumerate(settled.groups):
-        peak, spread = _peak_and_spread(group, model, census, boundaries, n)
+        peak, spread = _peak_and_spread(group, seen, census, boundaries, n)
         name = names[n] if names else f"R{n + 1}"
         items.append(
             ValueRange(
@@ -107,9 +109,32 @@ def _pure_share(group: Group, model: Mixture) -> float:
     return min(1.0, model.weight[members].sum() + model.mixed[np.ix_(members, members)].sum())
 
 
-def _seen_at_uniform_places(model: Mixture, peaks: list[Peak]) -> Mixture:
-    """The model with the means seen at uniform places: another estimate of the same, for the doubt between them."""
-    return Mixture(np.array([p.value for p in peaks]), model.spread, model.weight, model.mixed)
+def _at_uniform_places(model: Mixture, peaks: list[Peak]) -> Mixture:
+    """The model with the means seen at uniform places, which mixed voxels hardly reach."""
+    return replace(model, mean=np.array([p.value for p in peaks]))
+
+
+def _half_widths(
+    census: Census,
+    bins: Bins,
+    model: Mixture,
+    frame: Frame,
+    settled: Settled,
+    peaks: list[Peak],
+    boundaries: Array,
+) -> Array:
+    """Half the 95 % interval of every boundary.
+
+    Four parts, added in quadrature: how the boundary changes when blocks of the scan are left out, the standard
+    error of the two peaks, the difference to the boundary with the means that the model fits to all voxels (what the
+    model cannot describe), and the width of a bin.
+    """
+    drawn = jackknife_half_widths(census, bins, model, frame, settled)
+    errors = np.array([peaks[g.lead].value_error for g in settled.groups])
+    sampled = COVERAGE_95 * np.hypot(errors[1:], errors[:-1]) / 2
+    counts = bins.join(census.counts)
+    doubt = find_boundaries(model, settled, counts, bins.edges) - boundaries
+    return np.sqrt(drawn**2 + sampled**2 + doubt**2 + census.axis.width**2 / 12)
 
 
 def _wrong_number(given: int, peaks: list[float], unit: Unit) -> str:

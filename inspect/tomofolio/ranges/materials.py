@@ -31,11 +31,15 @@ UNEVEN_SHARE = 0.07
 CLEAR = 3.5
 #: ... and should then leave less than this share of the lower one's height between them.
 EMPTY = 0.1
+#: A peak wider than so many times the difference that its uniform places allow drifts: noise alone cannot spread it.
+DRIFTING = 1.5
 #: What lies near the background (foam, wrapping, a cushion) belongs to it when its share × contrast² is less than this
 #: part of the main material's: it hardly adds to the variance between the classes that a threshold is there to part.
 PACKING_SHARE = 5e-4
 #: Two peaks with this many times their own voxels between them are one material of varying value (bone).
 CONTINUUM_RATIO = 3.0
+#: What shows no peak is one too from this share of the object on; less are grains too small to have a pure voxel.
+CONTINUUM_SHARE = 0.02
 #: A spike whose next peak is reached without mixed voxels (less than this share of it) is padding, not a material.
 PADDING_MIXED = 1e-3
 #: A peak narrower than this many bins has no noise: cleared air, padding, saturation.
@@ -61,7 +65,7 @@ class Settled:
 
 def settle(census: Census, peaks: list[Peak], model: Mixture) -> Settled:
     """Join the peaks that are one range, and decide whether the lowest is background."""
-    groups = [Group((i,), i) for i in range(len(model.mean))]
+    groups = [Group((i,), i, "continuum" if p.tail > CONTINUUM_SHARE else "") for i, p in enumerate(peaks)]
     background = _surrounding(groups, census, model)
     if background is not None:
         groups, background = _leave_padding(groups, background, census, model)
@@ -169,7 +173,9 @@ def _join_uneven(
         distance = model.mean[b] - model.mean[a]
         near = background and g > 0 and distance < UNEVEN_SHARE * (model.mean[b] - air)
         clear = distance > CLEAR * (peaks[a].spread + peaks[b].spread)
-        if near or emptiest_between(peaks[a], peaks[b], census) > (EMPTY if clear else VALLEY):
+        drifting = max(p.spread / max(p.used_limit, census.axis.width) for p in (peaks[a], peaks[b])) > DRIFTING
+        touching = emptiest_between(peaks[a], peaks[b], census) > (EMPTY if clear or drifting else VALLEY)
+        if near or touching:
             lead = a if model.weight[a] >= model.weight[b] else b
             groups = [*groups[:g], _joined(groups[g], groups[g + 1], lead, "uneven"), *groups[g + 2 :]]
         else:

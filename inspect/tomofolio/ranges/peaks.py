@@ -40,8 +40,23 @@ MOST_PEAKS = 10
 #: A spike so many spreads (from, to) beside a peak with so many times its places is the peak's tail, cut off.
 CUT_AWAY, CUT_REACH = 0.7, 4.0
 CUT_PLACES = 3.0
+#: What is farther above the uppermost peak than so many spreads, and than this part of the contrast to the lowest peak,
+#: is a material of its own ...
+TAIL_SPREADS, TAIL_CONTRAST = 10.0, 0.25
+#: ... from this share of the object on.
+TAIL_LEAST = 5e-4
+#: The shape of a peak is read where the kernel is narrower than this part of its spread, and from so many places.
+SHARP_KERNEL = 0.5
+FEWEST_FOR_SHAPE = 1000
+#: So many uniform places count as one independent value.
+DEPENDENT = 8.0
+#: A level is not too lax for a peak while it allows at most so many of the peak's spreads: more is needless, for
+#: noise makes neighbours differ by less.
+LAXEST = 8.0
 #: Values pile up at an end of the scan when the last bin holds so many times the mean of so many bins beside it.
 PILE_HEIGHT, PILE_BINS = 5.0, 8
+#: ... and this share of the peak's outer half.
+PILE_SHARE = 0.05
 #: Where values end in a peak, strict levels see the end alone; laxer ones are needed for it.
 CUT_LIMIT = 1.0
 #: Peaks are comparable where the rarer has this share of the other's places.
@@ -61,7 +76,8 @@ class Peak:
     ``low`` and ``high`` are where the peak falls to `VALLEY` of its height, ``places`` the uniform places it holds,
     ``limit`` the level where it was first seen, ``share`` the share of all voxels that are seen to be pure at the
     level ``share_limit``, ``cut`` whether the stored values end in the peak, ``shape`` its standard deviation / the
-    one that its width at half height gives: 1 for a normal density, less for a flat top.
+    one that its width at half height gives: 1 for a normal density, less for a flat top, ``used_limit`` the level that
+    ``value`` and ``spread`` are from. ``tail`` is not 0 for what shows no peak: see `_tail`.
     """
 
     value: float
@@ -74,6 +90,13 @@ class Peak:
     share_limit: float = 0.0
     cut: bool = False
     shape: float = 1.0
+    used_limit: float = 0.0
+    tail: float = 0.0
+
+    @property
+    def value_error(self) -> float:
+        """Standard error of ``value``; neighbouring places share voxels, so few of them are independent."""
+        return self.spread * float(np.sqrt(DEPENDENT / max(self.places, DEPENDENT)))
 
 
 def find_peaks(census: Census) -> list[Peak]:
@@ -89,7 +112,8 @@ def find_peaks(census: Census) -> list[Peak]:
             found = sorted([*others, peak], key=lambda p: p.value)
     found = _marked_where_cut(found, census)
     found = sorted(sorted(found, key=lambda p: -p.places)[:MOST_PEAKS], key=lambda p: p.value)
-    return [_completed(p, found, levels, census) for p in found] or [_whole(census)]
+    found = [_completed(p, found, levels, census) for p in found]
+    return found + _tail(found, census) if found else [_whole(census)]
 
 
 def _is_cut_tail(spike: Peak, peak: Peak, found: list[Peak], census: Census) -> bool:
@@ -110,7 +134,9 @@ def _marked_where_cut(found: list[Peak], census: Census) -> list[Peak]:
             continue
         end = int(used[n])
         beside = census.counts[end + step : end + step * (PILE_BINS + 1) : step]
-        if beside.min() > 0 and census.counts[end] > PILE_HEIGHT * beside.mean():
+        outer = (census.axis.centres - found[n].value) * step < 0
+        pile = census.counts[end] > PILE_SHARE * census.counts[outer].sum()
+        if beside.min() > 0 and pile and census.counts[end] > PILE_HEIGHT * beside.mean():
             marked[n] = replace(marked[n], cut=True)
     return marked
 
@@ -132,6 +158,27 @@ def _is_new(peak: Peak, found: list[Peak]) -> bool:
     return peak.places >= BETWEEN_SHARE * min(below[-1].places, above[0].places)
 
 
+def _tail(found: list[Peak], census: Census) -> list[Peak]:
+    """A peak for what is far brighter than the uppermost one, and so cannot be mixed of those found.
+
+    Grains too small to have a uniform place, or bone without one. Its value is what only one voxel in twenty of it
+    exceeds: in small grains hardly a voxel is pure. ``tail`` is the share of the object that lies there.
+    """
+    if len(found) < 2:
+        return []
+    lowest, top = found[0], found[-1]
+    away = max(TAIL_SPREADS * top.spread, TAIL_CONTRAST * (top.value - lowest.value))
+    centres = census.axis.centres
+    beyond = np.where(centres > top.value + away, census.counts, 0)
+    object_counts = census.counts[centres > (lowest.value + found[1].value) / 2].sum()
+    if top.spread < census.axis.width or beyond.sum() < max(FEWEST_PLACES, TAIL_LEAST * object_counts):
+        return []
+    value = float(np.interp(0.95, np.cumsum(beyond) / beyond.sum(), centres))
+    spread = (value - top.value - away) / 10
+    near = (value - spread, value + spread)
+    return [Peak(value, spread, float(beyond.sum()), *near, away, tail=float(beyond.sum() / object_counts))]
+
+
 def _completed(peak: Peak, found: list[Peak], levels: list[list[Peak]], census: Census) -> Peak:
     """The peak as the laxest level shows it that is still strict for its distance to its neighbours.
 
@@ -140,22 +187,25 @@ def _completed(peak: Peak, found: list[Peak], levels: list[list[Peak]], census: 
     others = [p.value for p in found if p is not peak]
     near = min((abs(value - peak.value) for value in others), default=np.inf)
     limit = max(peak.limit, (CUT_LIMIT if peak.cut else BETWEEN_LIMIT) * near)
-    best = peak
+    best = sharp = peak
     for p in (p for level in levels for p in level):
         alone = p.low <= peak.value <= p.high and not any(p.low <= value <= p.high for value in others)
-        if alone and peak.limit < p.limit <= limit:
+        if alone and peak.limit < p.limit <= limit and (peak.cut or p.limit <= LAXEST * best.spread):
             best = replace(p, cut=peak.cut)
+        if alone and p.limit <= limit and SMOOTHING * p.limit <= SHARP_KERNEL * p.spread:
+            sharp = p
     share = places_near(best, census, limit) / max(1, census.looked_at)
-    shape = _shape(best, census, max(best.limit, peak.limit))
-    return replace(best, limit=peak.limit, share=share, share_limit=limit, shape=shape)
+    shape = _shape(sharp, census)
+    return replace(best, limit=peak.limit, share=share, share_limit=limit, shape=shape, used_limit=best.limit)
 
 
-def _shape(peak: Peak, census: Census, limit: float) -> float:
+def _shape(peak: Peak, census: Census) -> float:
     """Standard deviation of the places around a peak / the one that its width gives: 1 if normal, 0.7 if flat."""
     centres = census.axis.centres
     near = np.abs(centres - peak.value) <= 3 * peak.spread
-    counts = census.uniform[np.searchsorted(census.limits, limit * (1 + 1e-9), side="right") - 1][near]
-    if peak.spread < 2 * census.axis.width or counts.sum() <= 0:
+    counts = census.uniform[np.searchsorted(census.limits, peak.limit * (1 + 1e-9), side="right") - 1][near]
+    sharp = max(2 * census.axis.width, SMOOTHING * peak.limit / SHARP_KERNEL) <= peak.spread
+    if not sharp or counts.sum() < FEWEST_FOR_SHAPE:
         return 1.0
     mean = np.average(centres[near], weights=counts)
     return float(np.sqrt(np.average((centres[near] - mean) ** 2, weights=counts)) / peak.spread)
