@@ -29,6 +29,7 @@ from numpy.typing import NDArray
 
 from tomofolio.body.result import Body
 from tomofolio.fitness.edges import Patches, ball_radius, surface_patches
+from tomofolio.fitness.samples import flagged_first
 from tomofolio.volume import Grid, Volume
 
 Array = NDArray[np.float64]
@@ -166,7 +167,7 @@ class _EdgeFit:
 
         near = np.linalg.norm(self.patches.position, axis=-1) <= ball_radius(self.grid)
         air, step = self.patches.air[:, None], (self.patches.material - self.patches.air)[:, None]
-        at = _first_voxels(near & self.patches.usable, _MOST_VOXELS)
+        at = flagged_first(near & self.patches.usable, _MOST_VOXELS)
         weight = np.take_along_axis(near & self.patches.usable, at, axis=1)
         position = np.take_along_axis(self.patches.position, at[..., None], axis=1)
         relative = (np.take_along_axis(self.patches.value, at, axis=1) - air) / step
@@ -216,7 +217,7 @@ class _EdgeFit:
         chosen = np.abs(turned[..., 0] - self.local[:, :1]) <= reach
         chosen &= turned[..., 1] ** 2 + turned[..., 2] ** 2 <= ball_radius(self.grid) ** 2
         chosen &= self.patches.usable
-        at = _first_voxels(chosen, _MOST_VOXELS)
+        at = flagged_first(chosen, _MOST_VOXELS)
         self.chosen = np.take_along_axis(chosen, at, axis=1).astype(np.float64)
         self.value = np.take_along_axis(self.patches.value, at, axis=1)
         self.w, self.p, self.q = (np.take_along_axis(turned[..., n], at, axis=1) for n in range(3))
@@ -357,17 +358,3 @@ class _EdgeFit:
             error,
             edges,
         )
-
-
-def _first_voxels(flags: NDArray[np.bool_], most: int) -> NDArray[np.int64]:
-    """Indices of the set flags, row by row, evenly thinned to ``most``; rows with fewer are filled with unset ones.
-
-    Returns
-    -------
-    shape (rows, n), n = ``most`` or the largest number of set flags where that is smaller.
-    """
-    order = np.argsort(~flags, axis=1, kind="stable")
-    counts = flags.sum(axis=1)
-    n = int(min(most, max(1, counts.max(initial=1))))
-    thinned = (np.arange(n)[None, :] * np.maximum(counts, n)[:, None]) // n
-    return np.take_along_axis(order, thinned, axis=1)

@@ -74,3 +74,17 @@ def read_boxes(
         values[n] *= slope[k, None, None]
         values[n] += intercept[k, None, None]
     return Boxes(centres, values, labels)
+
+
+def flagged_first(flags: NDArray[np.bool_], most: int) -> NDArray[np.int64]:
+    """Indices of the set flags, row by row, evenly thinned to ``most``; rows with fewer are filled with unset ones.
+
+    Returns
+    -------
+    shape (rows, n), n = ``most`` or the largest number of set flags where that is smaller.
+    """
+    order = np.argsort(~flags, axis=1, kind="stable")
+    counts = flags.sum(axis=1)
+    n = int(min(most, max(1, counts.max(initial=1))))
+    thinned = (np.arange(n)[None, :] * np.maximum(counts, n)[:, None]) // n
+    return np.take_along_axis(order, thinned, axis=1)
