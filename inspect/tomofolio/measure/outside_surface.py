@@ -1,0 +1,74 @@
+"""Points on the outside surface of the part, to sub-voxel accuracy, for distances in millimetres on any grid."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+from numba import njit
+from numpy.typing import NDArray
+
+from tomofolio.body.result import Body
+from tomofolio.volume import Volume
+
+Array = NDArray[Any]
+
+
+def outside_points_mm(volume: Volume, body: Body) -> NDArray[np.float64]:
+    """Shape (n, 3), LPS: where the values cross the threshold between an object voxel and an outside neighbour."""
+    if body.threshold is None:
+        return np.empty((0, 3))
+    box = np.array([(part.start, part.stop) for part in body.box])
+    arguments = (volume.stored, volume.slope, volume.intercept, body.regions, box, float(body.threshold))
+    points = np.empty((_count(body.regions, box), 3), np.float32)
+    _fill(*arguments, points)
+    return volume.grid.to_mm(points.astype(np.float64))
+
+
+@njit(cache=True)
+def _is_out(code: int) -> bool:
+    return code != 1 and code != 2
+
+
+@njit(cache=True)
+def _count(regions: Array, box: Array) -> int:
+    slices, rows, columns = regions.shape
+    n = 0
+    for k in range(box[0, 0], box[0, 1]):
+        for j in range(box[1, 0], box[1, 1]):
+            for i in range(box[2, 0], box[2, 1]):
+                if regions[k, j, i] == 1:
+                    n += k > 0 and _is_out(regions[k - 1, j, i])
+                    n += k + 1 < slices and _is_out(regions[k + 1, j, i])
+                    n += j > 0 and _is_out(regions[k, j - 1, i])
+                    n += j + 1 < rows and _is_out(regions[k, j + 1, i])
+                    n += i > 0 and _is_out(regions[k, j, i - 1])
+                    n += i + 1 < columns and _is_out(regions[k, j, i + 1])
+    return n
+
+
+@njit(cache=True)
+def _fill(
+    stored: Array, slope: Array, intercept: Array, regions: Array, box: Array, threshold: float, points: Array
+) -> None:
+    slices, rows, columns = regions.shape
+    steps = ((-1, 0, 0), (1, 0, 0), (0, -1, 0), (0, 1, 0), (0, 0, -1), (0, 0, 1))
+    n = 0
+    for k in range(box[0, 0], box[0, 1]):
+        for j in range(box[1, 0], box[1, 1]):
+            for i in range(box[2, 0], box[2, 1]):
+                if regions[k, j, i] != 1:
+                    continue
+                here = slope[k] * stored[k, j, i] + intercept[k]
+                for dk, dj, di in steps:
+                    a, b, c = k + dk, j + dj, i + di
+                    if not (0 <= a < slices and 0 <= b < rows and 0 <= c < columns) or not _is_out(regions[a, b, c]):
+                        continue
+                    there = slope[a] * stored[a, b, c] + intercept[a]
+                    part = 0.5
+                    if here != there:
+                        part = min(max((here - threshold) / (here - there), 0.0), 1.0)
+                    points[n, 0] = k + part * dk
+                    points[n, 1] = j + part * dj
+                    points[n, 2] = i + part * di
+                    n += 1
