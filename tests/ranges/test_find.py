@@ -135,3 +135,50 @@ def test_peaks_that_overlap_are_two_ranges_with_a_remark(phantoms, distance):
     assert [item.peak for item in ranges.items] == pytest.approx([1000, 1000 + 100 * distance], abs=12)
     assert ranges.boundaries[0] == pytest.approx(1000 + 50 * distance, abs=8)
     assert "ranges-overlap" in {remark.code for remark in ranges.remarks}
+
+
+def test_every_label_of_a_segmented_scan_is_a_range(phantoms):
+    part = phantoms.part_in_air(1) > 0.5
+    ranges = find_ranges(phantoms.to_volume(part.astype(np.int16)))
+    assert [item.peak for item in ranges.items] == pytest.approx([0, 1], abs=0.1)
+    assert ranges.background is not None
+    core = phantoms.balls_in(part.shape, [(32, 30, 66)], [6]) > 0.5
+    ranges = find_ranges(phantoms.to_volume((100 * part + 50 * core).astype(np.int16)))
+    assert [item.peak for item in ranges.items] == pytest.approx([0, 100, 150], abs=1)
+
+
+@pytest.mark.parametrize("seed", SEEDS)
+def test_thin_walls_without_a_pure_voxel_are_a_range(phantoms, seed):
+    part = phantoms.part_in_air(seed) * (np.arange(96) % 12 < 2)
+    ranges = find_ranges(phantoms.to_volume(as_int16(phantoms.draw([part], [0, 5000], 150, seed))))
+    assert len(ranges.items) == 2
+    assert ranges.background is not None
+    # walls of two voxels with a blur of 0.8 reach erf(1 / (0.8 √2)) = 0.79 of the contrast at most: closed form
+    assert 0.7 * 5000 / 2 < ranges.boundaries[0] < 1.05 * 5000 / 2
+
+
+@pytest.mark.parametrize("seed", [1, 2, 3, 4, 5])
+def test_a_shell_of_varying_density_without_a_peak_is_a_range(phantoms, seed):
+    y, x = np.ogrid[:96, :96]
+    radius, angle = np.hypot(y - 48, x - 48), np.arctan2(y - 48, x - 48)
+    shell = np.clip(1.6 - np.abs(radius - 34) / (1.2 + 0.8 * np.sin(3 * angle + seed)), 0, 1) ** 2
+    values = -1000 + 1030 * (radius < 40) + shell * 1400 * (0.6 + 0.4 * np.sin(5 * angle))
+    values = np.broadcast_to(values, (24, 96, 96)) + 12 * phantoms.grainy((24, 96, 96), seed)
+    ranges = find_ranges(phantoms.to_volume(as_int16(values)))
+    assert [item.peak for item in ranges.items[:2]] == pytest.approx([-1000, 30], abs=5)
+    assert len(ranges.items) == 3
+    assert 100 < ranges.boundaries[1] < 450
+
+
+@pytest.mark.parametrize("shape", [(1, 1, 1), (1, 2, 2), (2, 3, 3), (3, 3, 3), (30, 1, 40), (40, 30, 2)])
+def test_scans_too_small_for_a_uniform_place_have_one_range(phantoms, shape):
+    stored = np.random.default_rng(2).normal(100, 10, shape).astype(np.int16)
+    ranges = find_ranges(phantoms.to_volume(stored))
+    assert len(ranges.items) == 1
+    assert np.isfinite(ranges.model).all()
+
+
+def test_noise_that_is_large_in_a_few_rows_is_no_range(phantoms):
+    values = phantoms.draw([phantoms.part_in_air(1)], [1000, 9000], 200, 1)
+    values[:, 45:50] += 2500 * np.random.default_rng(3).normal(size=(64, 5, 96))
+    assert len(find_ranges(phantoms.to_volume(as_int16(values))).items) == 2

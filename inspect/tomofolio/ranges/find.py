@@ -49,7 +49,7 @@ def find_ranges(volume: Volume, *, names: Sequence[str] = (), named_by: str = ""
     model = fit(counts, bins.edges, start_from(peaks, axis), frame)
     frame = raise_least(frame, model, peaks, census)
     model = fit(counts, bins.edges, model, frame)
-    settled = settle(census, peaks, model)
+    settled = settle(census, peaks, model, frame.least)
     seen = _at_uniform_places(model, peaks)
     boundaries = find_boundaries(seen, settled, counts, bins.edges)
     if names and len(names) != len(settled.groups):

@@ -15,6 +15,9 @@ Counts = NDArray[np.int64]
 
 #: A histogram has at most this many bins.
 MOST_BINS = 4096
+#: Where no more levels than this are used (a segmented scan), each is a material: bins are so many times finer, which
+#: keeps them apart.
+FEW_LEVELS, FEW_LEVELS_FINER = 4, 8
 #: From so many voxels, evenly spread, limits and steps of the values are read.
 SAMPLE_VOXELS = 1 << 21
 #: Blocks of neighbouring slices (and rows) that are counted apart, for the bootstrap.
@@ -130,6 +133,8 @@ def choose_axis(volume: Volume) -> ValueAxis:
         width = _step(sample[kept], slope[0], intercept[0], low, high) * abs(float(slope[0]))
     else:
         width = float(np.median(np.abs(slope))) if integer else (high - low) / (MOST_BINS / 2)
+    if integer and len(np.unique(values)) <= FEW_LEVELS:
+        width /= FEW_LEVELS_FINER
     width *= max(1, int(np.ceil((high - low) / (width * (MOST_BINS - 8)))))
     margin = 2
     bins = int(np.floor((high - low) / width + 0.5)) + 1 + 2 * margin

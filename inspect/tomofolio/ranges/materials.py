@@ -63,15 +63,18 @@ class Settled:
     background: bool
 
 
-def settle(census: Census, peaks: list[Peak], model: Mixture) -> Settled:
-    """Join the peaks that are one range, and decide whether the lowest is background."""
+def settle(census: Census, peaks: list[Peak], model: Mixture, pure: Array) -> Settled:
+    """Join the peaks that are one range, and decide whether the lowest is background.
+
+    ``pure`` (shape (materials,)) is the share of the voxels that uniform places show to be of each peak.
+    """
     groups = [Group((i,), i, "continuum" if p.tail > CONTINUUM_SHARE else "") for i, p in enumerate(peaks)]
     background = _surrounding(groups, census, model)
     if background is not None:
         groups, background = _leave_padding(groups, background, census, model)
         groups = _join_below(groups, background, model)
         groups = _join_packing(groups, census, peaks, model)
-    groups = _join_continuum(groups, census, peaks, model)
+    groups = _join_continuum(groups, census, peaks, model, pure) if len(groups) > 2 else groups
     groups = _join_uneven(groups, census, peaks, model, background is not None)
     while len(groups) > MOST_RANGES:
         groups = _drop_smallest(groups, model)
@@ -142,20 +145,21 @@ def _join_packing(groups: list[Group], census: Census, peaks: list[Peak], model:
     return groups
 
 
-def _join_continuum(groups: list[Group], census: Census, peaks: list[Peak], model: Mixture) -> list[Group]:
-    """The uppermost peaks, with far more voxels between them than in them, are one material of varying value.
+def _join_continuum(groups: list[Group], census: Census, peaks: list[Peak], model: Mixture, pure: Array) -> list[Group]:
+    """The peaks above the main material's, with far more voxels among them than in them, are one of varying value.
 
-    Only the uppermost: between others the mixed voxels of third materials lie too.
+    Only those: between others the mixed voxels of third materials lie too. ``pure`` (shape (materials,)) is the share
+    of the voxels that is seen to be pure.
     """
-    centres, counts = census.axis.centres, census.counts / max(1, census.counts.sum())
-    while len(groups) > 2:
-        a, b = groups[-2].members[-1], groups[-1].members[0]
-        low, high = peaks[a].value + 3 * peaks[a].spread, peaks[b].value - 3 * peaks[b].spread
-        between = counts[(centres > low) & (centres < high)].sum()
-        pure = model.weight[list(groups[-2].members)].sum() + model.weight[list(groups[-1].members)].sum()
-        if between <= CONTINUUM_RATIO * pure:
-            break
-        groups = [*groups[:-2], _joined(groups[-2], groups[-1], a, "continuum")]
+    main = int(np.argmax([model.weight[g.lead] * (n > 0) for n, g in enumerate(groups)]))
+    centres, shares = census.axis.centres, census.counts / max(1, census.counts.sum())
+    material = shares[centres > (model.mean[groups[0].lead] + model.mean[groups[1].lead]) / 2].sum()
+    for first in range(main + 1, len(groups) - 1):
+        members = [i for g in groups[first:] for i in g.members]
+        lowest = peaks[members[0]]
+        among = shares[centres > lowest.value - 3 * lowest.spread].sum()
+        if among > CONTINUUM_SHARE * material and among > (1 + CONTINUUM_RATIO) * pure[members].sum():
+            return [*groups[:first], Group(tuple(members), members[0], "continuum")]
     return groups
 
 

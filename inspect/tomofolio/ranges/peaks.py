@@ -43,8 +43,10 @@ CUT_PLACES = 3.0
 #: What is farther above the uppermost peak than so many spreads, and than this part of the contrast to the lowest peak,
 #: is a material of its own ...
 TAIL_SPREADS, TAIL_CONTRAST = 10.0, 0.25
-#: ... from this share of the object on.
-TAIL_LEAST = 5e-4
+#: ... from this share of the object on, or of the scan where only one peak is found, ...
+TAIL_LEAST, TAIL_LEAST_ALONE = 5e-4, 5e-3
+#: ... unless this part of it lies as far below the lowest peak.
+MIRRORED = 0.25
 #: The shape of a peak is read where the kernel is narrower than this part of its spread, and from so many places.
 SHARP_KERNEL = 0.5
 FEWEST_FOR_SHAPE = 1000
@@ -161,22 +163,24 @@ def _is_new(peak: Peak, found: list[Peak]) -> bool:
 def _tail(found: list[Peak], census: Census) -> list[Peak]:
     """A peak for what is far brighter than the uppermost one, and so cannot be mixed of those found.
 
-    Grains too small to have a uniform place, or bone without one. Its value is what only one voxel in twenty of it
-    exceeds: in small grains hardly a voxel is pure. ``tail`` is the share of the object that lies there.
+    Grains and walls too thin to have a uniform place, or bone without one. Its value is what only one voxel in twenty
+    of it exceeds: in small things hardly a voxel is pure. ``tail`` is the share of the object that lies there, 0 where
+    the object shows nothing else. As many voxels as far below the lowest peak make it noise.
     """
-    if len(found) < 2:
-        return []
     lowest, top = found[0], found[-1]
     away = max(TAIL_SPREADS * top.spread, TAIL_CONTRAST * (top.value - lowest.value))
-    centres = census.axis.centres
-    beyond = np.where(centres > top.value + away, census.counts, 0)
-    object_counts = census.counts[centres > (lowest.value + found[1].value) / 2].sum()
-    if top.spread < census.axis.width or beyond.sum() < max(FEWEST_PLACES, TAIL_LEAST * object_counts):
+    centres, counts = census.axis.centres, census.counts
+    beyond = np.where(centres > top.value + away, counts, 0)
+    mirrored = counts[centres < lowest.value - away].sum()
+    only = len(found) == 1
+    rest = counts.sum() if only else counts[centres > (lowest.value + found[1].value) / 2].sum()
+    fewest = max(FEWEST_PLACES, (TAIL_LEAST_ALONE if only else TAIL_LEAST) * rest)
+    if top.spread < census.axis.width or beyond.sum() < fewest or mirrored > MIRRORED * beyond.sum():
         return []
     value = float(np.interp(0.95, np.cumsum(beyond) / beyond.sum(), centres))
     spread = (value - top.value - away) / 10
-    near = (value - spread, value + spread)
-    return [Peak(value, spread, float(beyond.sum()), *near, away, tail=float(beyond.sum() / object_counts))]
+    share = 0.0 if only else float(beyond.sum() / rest)
+    return [Peak(value, spread, float(beyond.sum()), value - spread, value + spread, away, tail=share)]
 
 
 def _completed(peak: Peak, found: list[Peak], levels: list[list[Peak]], census: Census) -> Peak:
