@@ -37,8 +37,7 @@ def measure(volume: Volume, ranges: Ranges, body: Body, fitness: Fitness, *, loo
     if look_for_voids:
         field = level_field(volume, ranges, body)
         outside = outside_points_mm(volume, body)
-        voids = find_spots(volume, ranges, body, fitness, field, outside, sign=+1)
-        inclusions = find_spots(volume, ranges, body, fitness, field, outside, sign=-1)
+        voids, inclusions = find_spots(volume, ranges, body, fitness, field, outside)
         text = (
             "Pockets that reach the outside are part of the outside: they are not listed and not in the sums. "
             "Voids nearer to the outside than the edge blur reaches (2 σ + 1 voxels) are not looked for."

@@ -108,8 +108,8 @@ def patches(
     for group in merge_boxes(boxes, np.ceil(reach / spacing).astype(np.int64)):
         low = np.maximum(boxes[group, :, 0].min(axis=0) - margin, 0)
         high = np.minimum(boxes[group, :, 1].max(axis=0) + margin, limits)
-        place = tuple(slice(a, b) for a, b in zip(low, high, strict=True))
-        values = volume.values(place[0])[:, place[1], place[2]]
+        place = (slice(low[0], high[0]), slice(low[1], high[1]), slice(low[2], high[2]))
+        values = volume.values_in(place)
         regions = body.regions[place]
         index = np.stack(np.meshgrid(*(np.arange(a, b) for a, b in zip(low, high, strict=True)), indexing="ij"), -1)
         level = field.at(index)

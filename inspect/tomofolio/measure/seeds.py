@@ -23,6 +23,8 @@ FALSE_CALL_DEVIATIONS = 6.0
 #: … and by this share of the contrast, so that faint structure of the material itself is not reported.
 SMALLEST_SHARE = 0.1
 
+_DARK, _BRIGHT = 1, 2
+
 
 @dataclass(frozen=True)
 class Noise:
@@ -64,30 +66,20 @@ def noise_of(fitness: Fitness, spacing_mm: tuple[float, float, float], contrast:
     return Noise(max(sd, 1e-6 * contrast), correlation, np.clip(blur, 0.3, 4.0))
 
 
-def seed_runs(volume: Volume, body: Body, field: LevelField, contrast: float, noise: Noise, *, sign: int) -> Runs:
-    """Runs and components of the seeds: darker (``sign`` = +1) or brighter (−1) than the level.
+def seed_runs(volume: Volume, body: Body, field: LevelField, contrast: float, noise: Noise) -> tuple[Runs, Runs]:
+    """Runs and components of the dark seeds and of the bright seeds.
 
     A seed lies in the object or in what it encloses, and farther from the outside than its blurred edge reaches
-    (2 σ + 1 voxels), since there the outside itself makes the object darker.
+    (2 σ + 1 voxels), since there the outside itself makes the object darker. The same distance is kept from the
+    border of the scan, where it is not known what lies beyond.
     """
     threshold = max(FALSE_CALL_DEVIATIONS * noise.sd_of_mean_of_27, SMALLEST_SHARE * contrast)
     reach = np.ceil(2 * noise.blur_vox + 1).astype(np.int64)
     flags = np.zeros(volume.shape, np.uint8)
     box = np.array([(part.start, part.stop) for part in body.box])
-    _flag(
-        volume.stored,
-        volume.slope,
-        volume.intercept,
-        body.regions,
-        field.cells,
-        np.array(field.start),
-        box,
-        float(threshold),
-        float(sign),
-        reach,
-        flags,
-    )
-    return find_runs(flags, [1])
+    voxels = (volume.stored, volume.slope, volume.intercept, body.regions)
+    _flag(*voxels, field.cells, np.array(field.start), box, float(threshold), reach, flags)
+    return find_runs(flags, [_DARK]), find_runs(flags, [_BRIGHT])
 
 
 @njit(cache=True)
@@ -130,14 +122,15 @@ def _flag(
     start: Array,
     box: Array,
     threshold: float,
-    sign: float,
     reach: Array,
     flags: Array,
 ) -> None:
     slices, rows, columns = stored.shape
-    j0, j1 = max(box[1, 0], 1), min(box[1, 1], rows - 1)
-    i0, i1 = max(box[2, 0], 1), min(box[2, 1], columns - 1)
-    for k in prange(max(box[0, 0], 1), min(box[0, 1], slices - 1)):
+    j0, j1 = max(box[1, 0], reach[1]), min(box[1, 1], rows - reach[1])
+    i0, i1 = max(box[2, 0], reach[2]), min(box[2, 1], columns - reach[2])
+    # Between these no voxel can be a seed, whatever its own level: most voxels need no look at the field.
+    lowest, highest = cells.max() - threshold, cells.min() + threshold
+    for k in prange(max(box[0, 0], reach[0]), min(box[0, 1], slices - reach[0])):
         sums = np.empty(columns, np.float32)
         for j in range(j0, j1):
             # Sum over 3 × 3 slices and rows first: three of them make the mean of 27.
@@ -148,11 +141,9 @@ def _flag(
                     total += slope[a] * part + 3.0 * intercept[a]
                 sums[i] = total
             for i in range(i0, i1):
-                code = regions[k, j, i]
-                if code != 1 and code != 2:
-                    continue
                 mean = (sums[i - 1] + sums[i] + sums[i + 1]) / 27.0
-                if sign * (_level(cells, start, k, j, i) - mean) > threshold and not _near_outside(
-                    regions, k, j, i, reach
-                ):
-                    flags[k, j, i] = 1
+                if lowest <= mean <= highest or (regions[k, j, i] != 1 and regions[k, j, i] != 2):
+                    continue
+                difference = _level(cells, start, k, j, i) - mean
+                if abs(difference) > threshold and not _near_outside(regions, k, j, i, reach):
+                    flags[k, j, i] = _DARK if difference > 0 else _BRIGHT

@@ -9,6 +9,7 @@ from numpy.typing import NDArray
 from scipy.spatial import cKDTree
 
 from tomofolio.body.result import Body
+from tomofolio.body.runs import Runs
 from tomofolio.fitness.result import Fitness
 from tomofolio.measure.densest import densest_pocket
 from tomofolio.measure.estimate import Estimate, estimate
@@ -28,6 +29,21 @@ SMALLEST_SIGNIFICANCE = 2.5
 FAINT_CONTRAST = 0.75
 #: Below this many blur σ a spot's surface and the outside cannot be told apart.
 SEPARABLE_SIGMA = 3.0
+#: About so many points of a spot's surface are enough to find its shortest distance to the outside.
+LIGAMENT_POINTS = 600
+
+
+@dataclass(frozen=True)
+class _Surroundings:
+    """What all spots of a run share; ``outside`` is a tree of the points on the outside surface (LPS mm)."""
+
+    volume: Volume
+    ranges: Ranges
+    body: Body
+    field: LevelField
+    outside: cKDTree | None
+    noise: Noise
+    contrast: float
 
 
 @dataclass(frozen=True)
@@ -46,10 +62,8 @@ def find_spots(
     fitness: Fitness,
     field: LevelField,
     outside: Array,
-    *,
-    sign: int,
-) -> tuple[Spot, ...]:
-    """Voids (``sign`` = +1, darker) or inclusions (−1, brighter) in the part, largest first.
+) -> tuple[tuple[Spot, ...], tuple[Spot, ...]]:
+    """Voids (darker than the material) and inclusions (brighter) in the part, each largest first.
 
     Parameters
     ----------
@@ -58,23 +72,32 @@ def find_spots(
     """
     background = ranges.background
     if background is None:
-        return ()
+        return (), ()
     contrast = ranges.main.peak - background.peak
     noise = noise_of(fitness, volume.grid.spacing_mm, contrast)
-    runs = seed_runs(volume, body, field, contrast, noise, sign=sign)
+    dark, bright = seed_runs(volume, body, field, contrast, noise)
+    tree = cKDTree(outside, balanced_tree=False, compact_nodes=False) if len(outside) else None
+    surroundings = _Surroundings(volume, ranges, body, field, tree, noise, contrast)
+    return _measure_all(surroundings, dark, +1), _measure_all(surroundings, bright, -1)
+
+
+def _measure_all(around: _Surroundings, runs: Runs, sign: int) -> tuple[Spot, ...]:
     if not runs.count:
         return ()
+    volume, ranges, noise = around.volume, around.ranges, around.noise
+    background = ranges.background
+    assert background is not None, "without background there are no seeds"
     spacing = np.array(volume.grid.spacing_mm)
     spacing_vox = spacing / spacing.min()
     measured = []
-    for patch in patches(volume, body, runs, field, contrast, noise, sign=sign):
+    for patch in patches(volume, around.body, runs, around.field, around.contrast, noise, sign=sign):
         local = patch.level - background.peak if sign > 0 else _brightness(patch, ranges)
         found = estimate(patch, noise, local, spacing_vox, contrast_known=sign > 0)
         if _is_spot(patch, found, noise, sign):
             measured.append(_measure_one(volume, patch, found))
     measured.sort(key=lambda one: (-one.spot.volume_mm3, one.spot.position_mm))
     blur_mm = float(np.prod(noise.blur_vox * spacing) ** (1 / 3))
-    ligaments = _ligaments(measured, outside, SEPARABLE_SIGMA * blur_mm, float(spacing.min()))
+    ligaments = _ligaments(measured, around.outside, SEPARABLE_SIGMA * blur_mm, float(spacing.min()))
     nearest = _nearest(measured)
     letter = "V" if sign > 0 else "I"
     return tuple(
@@ -122,6 +145,8 @@ def _brightness(patch: Patch, ranges: Ranges) -> float:
 def _is_spot(patch: Patch, found: Estimate, noise: Noise, sign: int) -> bool:
     if found.relative_sd > 1 / SMALLEST_SIGNIFICANCE or found.own_contrast <= 0:
         return False
+    if not found.fitted and not patch.past_half.any():
+        return False  # a wide faint region: structure of the material, too faint for a void of its size
     at_outside = float(patch.edge_vox[patch.core].min()) < 1.5 + found.spread_vox
     if sign < 0:
         return not at_outside
@@ -155,21 +180,23 @@ def _measure_one(volume: Volume, patch: Patch, found: Estimate) -> _Measured:
     return _Measured(patch, found, shape, spot, found.relative_sd * mm3)
 
 
-def _ligaments(measured: list[_Measured], outside: Array, separable_mm: float, finest_mm: float) -> list[float | None]:
+def _ligaments(
+    measured: list[_Measured], outside: cKDTree | None, separable_mm: float, finest_mm: float
+) -> list[float | None]:
     """Shortest distance from each spot's surface to the outside; None where the two cannot be told apart."""
-    if not len(outside):
+    if outside is None:
         return [None] * len(measured)
-    tree = cKDTree(outside, balanced_tree=False, compact_nodes=False)
     gaps: list[float | None] = []
     for one in measured:
-        points = one.shape.points_mm
-        distances = tree.query(points)[0]
+        points = one.shape.points_mm[:: 1 + len(one.shape.points_mm) // LIGAMENT_POINTS]
+        distances = outside.query(points)[0]
         first = distances.min()
         # Noise moves every surface point, and the smallest of many noisy distances is too small: so the outside's
         # points around the gap are replaced by local means, which stay on a plane surface.
-        near = points[distances <= first + 2 * finest_mm]
-        around = sorted(set().union(*tree.query_ball_point(near, first + 2 * finest_mm)))
-        smooth = np.array([outside[n].mean(axis=0) for n in tree.query_ball_point(outside[around], 2.5 * finest_mm)])
+        near = points[distances <= first + finest_mm]
+        around = sorted(set().union(*outside.query_ball_point(near, first + finest_mm)))
+        means = outside.query_ball_point(outside.data[around], 2.5 * finest_mm)
+        smooth = np.array([outside.data[n].mean(axis=0) for n in means])
         distance = float(cKDTree(smooth).query(near)[0].min())
         gaps.append(distance if distance >= separable_mm else None)
     return gaps
