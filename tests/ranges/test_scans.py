@@ -19,6 +19,7 @@ def test_engine_block_shows_cleared_air_and_two_metals(engine):
     assert hard.peak > 200
     assert 60 < light.lower < 80
     assert 175 < hard.lower < 215
+    assert "ranges-saturated" in {remark.code for remark in ranges.remarks}
 
 
 def test_engine_block_keeps_its_ranges_in_parts_of_the_scan(engine):
@@ -46,7 +47,8 @@ def test_head_shows_air_fat_soft_tissue_and_bone(head, padding_known):
     assert -700 < fat.lower < -400
     assert -70 < soft.lower < 0
     assert 150 < bone.lower < 400
+    low, high = bone.lower_95
+    assert high - low > 50  # where a material without a peak begins is a choice, and the interval shows it
     assert "ranges-continuum" in {remark.code for remark in ranges.remarks}
     if padding_known:
         assert ranges.histogram.counts.sum() == np.count_nonzero(head.stored != -1500)
-    assert ranges.histogram.counts.dtype.kind == "i"

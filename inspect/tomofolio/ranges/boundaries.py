@@ -48,17 +48,31 @@ def _between(model: Mixture, lower: Group, upper: Group, counts: Array, edges: A
     return float(at[min(n, len(at) - 1)])
 
 
-def _below_continuum(model: Mixture, a: int, counts: Array, edges: Array) -> float:
+def _below_continuum(model: Mixture, a: int, counts: Array, edges: Array, part: float = 0.5) -> float:
     """Half-way between a peak and the median of all that lies clear above it.
 
-    A material of varying value has no peak to go half-way to; the median of its voxels stands for it.
+    A material of varying value has no peak to go half-way to; the median of its voxels (or another ``part``) stands
+    for it.
     """
     centres = (edges[1:] + edges[:-1]) / 2
     clear = np.where(centres > model.mean[a] + 5 * model.spread[a], counts, 0.0)
     if clear.sum() <= 0:
         return float(model.mean[a] + 5 * model.spread[a])
-    median = np.interp(0.5, np.cumsum(clear) / clear.sum(), edges[1:])
-    return float((model.mean[a] + median) / 2)
+    typical = np.interp(part, np.cumsum(clear) / clear.sum(), edges[1:])
+    return float((model.mean[a] + typical) / 2)
+
+
+def continuum_doubts(model: Mixture, settled: Settled, counts: Array, edges: Array) -> Array:
+    """Shape (ranges − 1,): how far a boundary would move if the first quartile stood for a material of varying value.
+
+    0 for all others. What stands for such a material is a choice, and no resampling shows how much hangs on it.
+    """
+    doubts = np.zeros(len(settled.groups) - 1)
+    for n, (lower, upper) in enumerate(zip(settled.groups[:-1], settled.groups[1:], strict=True)):
+        if upper.reason == "continuum":
+            ends = [_below_continuum(model, lower.lead, counts, edges, part) for part in (0.25, 0.5)]
+            doubts[n] = ends[1] - ends[0]
+    return doubts
 
 
 def jackknife_half_widths(census: Census, bins: Bins, model: Mixture, frame: Frame, settled: Settled) -> Array:

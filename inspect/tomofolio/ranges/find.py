@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tomofolio.errors import CallError
-from tomofolio.ranges.boundaries import find_boundaries, jackknife_half_widths
+from tomofolio.ranges.boundaries import continuum_doubts, find_boundaries, jackknife_half_widths
 from tomofolio.ranges.histogram import Census, take_census
 from tomofolio.ranges.materials import Group, Settled, settle
 from tomofolio.ranges.mixture import Bins, Frame, Mixture, fit, fitted_bins, frame_of, raise_least, start_from
@@ -84,7 +84,7 @@ def find_ranges(volume: Volume, *, names: Sequence[str] = (), named_by: str = ""
     edges = np.append(centres - axis.width / 2, centres[-1] + axis.width / 2)
     expected = model.shares(edges) * census.counts.sum()
     histogram = Histogram(centres, census.counts, axis.width)
-    remarks = remarks_about(settled, peaks, model, boundaries, volume.unit)
+    remarks = remarks_about(settled, peaks, model, boundaries, volume.unit, _is_saturated(settled, model, census))
     return Ranges(tuple(items), histogram, expected, remarks)
 
 
@@ -101,6 +101,14 @@ def _peak_and_spread(group: Group, model: Mixture, census: Census, boundaries: A
         return float(model.mean[group.lead]), float(model.spread[group.lead])
     mean = float(np.average(centres, weights=weight))
     return mean, float(np.sqrt(np.average((centres - mean) ** 2, weights=weight)))
+
+
+def _is_saturated(settled: Settled, model: Mixture, census: Census) -> bool:
+    """Whether the uppermost peak has no noise, though others have, and lies where the values end."""
+    lead, width = settled.groups[-1].lead, census.axis.width
+    noisy = bool(np.any(model.spread > width))
+    end = census.axis.centres[np.flatnonzero(census.counts)[-1]] if census.counts.any() else np.inf
+    return noisy and bool(model.spread[lead] < width / 2 and model.mean[lead] > end - 2 * width)
 
 
 def _pure_share(group: Group, model: Mixture) -> float:
@@ -125,16 +133,17 @@ def _half_widths(
 ) -> Array:
     """Half the 95 % interval of every boundary.
 
-    Four parts, added in quadrature: how the boundary changes when blocks of the scan are left out, the standard
+    Five parts, added in quadrature: how the boundary changes when blocks of the scan are left out, the standard
     error of the two peaks, the difference to the boundary with the means that the model fits to all voxels (what the
-    model cannot describe), and the width of a bin.
+    model cannot describe), the choice of what stands for a material of varying value, and the width of a bin.
     """
     drawn = jackknife_half_widths(census, bins, model, frame, settled)
     errors = np.array([peaks[g.lead].value_error for g in settled.groups])
     sampled = COVERAGE_95 * np.hypot(errors[1:], errors[:-1]) / 2
     counts = bins.join(census.counts)
     doubt = find_boundaries(model, settled, counts, bins.edges) - boundaries
-    return np.sqrt(drawn**2 + sampled**2 + doubt**2 + census.axis.width**2 / 12)
+    choice = continuum_doubts(model, settled, counts, bins.edges)
+    return np.sqrt(drawn**2 + sampled**2 + doubt**2 + choice**2 + census.axis.width**2 / 12)
 
 
 def _wrong_number(given: int, peaks: list[float], unit: Unit) -> str:

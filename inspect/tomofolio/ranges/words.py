@@ -19,7 +19,12 @@ OVERLAP = 0.05
 
 
 def remarks_about(
-    settled: Settled, peaks_seen: list[Peak], model: Mixture, boundaries: NDArray[np.float64], unit: Unit
+    settled: Settled,
+    peaks_seen: list[Peak],
+    model: Mixture,
+    boundaries: NDArray[np.float64],
+    unit: Unit,
+    saturated: bool,
 ) -> tuple[Remark, ...]:
     """Remarks on ranges that overlap, were joined, or have no peak of their own."""
     remarks = []
@@ -49,6 +54,10 @@ def remarks_about(
         if peaks_seen[group.lead].shape < FLAT and group.reason != "continuum":
             text = f"The peak of {name} is flat: uneven values, or two materials too near each other to be told apart."
             remarks.append(Remark("ranges-flat-peak", Severity.NOTE, text))
+    if saturated:
+        name = f"R{len(settled.groups)}"
+        text = f"{name} is cut off where the stored values end: its true peak is higher, and so is its lower boundary."
+        remarks.append(Remark("ranges-saturated", Severity.CAUTION, text))
     for n, boundary in enumerate(boundaries):
         a, b = settled.groups[n].lead, settled.groups[n + 1].lead
         smaller = max(min(model.weight[a], model.weight[b]), 1e-12)
