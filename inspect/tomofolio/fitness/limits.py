@@ -8,12 +8,13 @@ Over the frequencies up to half a cycle per voxel the blurred sphere's spectrum 
   correlate with size and contrast;
 * the variance of its volume when the sphere is fitted by plain least squares, as one who does not know the noise's
   spectrum would do;
-* the signal-to-noise ratio of a filter shaped like the blurred sphere, ∫F² / √(∫F² S).
+* the mean of 3 × 3 × 3 voxels at the sphere and its standard deviation, which decide whether it is found
+  (`tomofolio.fitness.detection`).
 
 References
 ----------
 C. R. Rao, Bull. Calcutta Math. Soc. 37 (1945) 81; H. Cramér, Mathematical Methods of Statistics (1946).
-R. F. Wagner and D. G. Brown, Phys. Med. Biol. 30 (1985) 489: the matched filter that does not whiten the noise.
+J. W. Goodman, Introduction to Fourier Optics (1968): box averages and sampling as products of spectra.
 """
 
 from __future__ import annotations
@@ -24,10 +25,12 @@ from functools import lru_cache
 import numpy as np
 from numpy.typing import NDArray
 
+from tomofolio.fitness.detection import FALSE_CALL_DEVIATIONS, SMALLEST_SHARE
+
 Array = NDArray[np.float64]
 
-#: Standard normal quantiles: one false call in 10⁸ voxels, and 95 % of the voids found.
-_FALSE_CALL, _FOUND = 5.612, 1.645
+#: Standard normal quantile: 95 % of the voids found.
+_FOUND = 1.645
 #: Half width of the 95 % interval of a volume that still counts as measured, and the normal quantile.
 _TOLERANCE, _QUANTILE_95 = 0.25, 1.96
 _NODES = 32
@@ -74,6 +77,9 @@ class SphereLimits:
         self._weight = _outer(weight, weight, weight)
         self._transfer = _outer(*transfer)
         self._noise = _outer(*noise)
+        mean_of_three = (1 + 2 * np.cos(2 * np.pi * at)) / 3
+        self._box = _outer(mean_of_three, mean_of_three, mean_of_three)
+        self._place = _outer(np.sinc(at), np.sinc(at), np.sinc(at))
         squares = [(at / s) ** 2 for s in spacing]
         self._frequency = np.sqrt(squares[0][:, None, None] + squares[1][:, None] + squares[2])
         self._cnr = cnr
@@ -98,15 +104,24 @@ class SphereLimits:
         variance = float(np.sum(power * self._noise)) / (self._cnr * float(np.sum(power))) ** 2
         return float(3 / (diameter / 2) * np.sqrt(variance))
 
-    def signal_to_noise(self, diameter: float) -> float:
-        """Signal-to-noise ratio of the filter that is shaped like the blurred void."""
+    def mean_of_27(self, diameter: float) -> tuple[float, float]:
+        """Mean of the 3 × 3 × 3 voxels around a void, as a share of the contrast, and its standard deviation.
+
+        The void's place in the voxel is left to chance: the mean is averaged over all of them.
+        """
         sphere, _ = self._sphere(diameter / 2)
-        power = self._weight * self._transfer * sphere * sphere
-        return self._cnr * float(np.sum(power) / np.sqrt(np.sum(power * self._noise)))
+        signal = float(np.sum(self._weight * np.sqrt(self._transfer) * self._box * self._place * sphere))
+        variance = float(np.sum(self._weight * self._noise * self._box**2))
+        return signal, float(np.sqrt(variance)) / self._cnr
 
     def detectable_diameter(self) -> float | None:
-        """Diameter found with 95 % probability at one false call in 10⁸ voxels; None beyond 40 voxels."""
-        return self._crossing(lambda d: self.signal_to_noise(d) - (_FALSE_CALL + _FOUND))
+        """Diameter that the rule of `detection` finds with 95 % probability; None beyond 40 voxels."""
+
+        def surplus(diameter: float) -> float:
+            signal, sd = self.mean_of_27(diameter)
+            return signal - _FOUND * sd - max(FALSE_CALL_DEVIATIONS * sd, SMALLEST_SHARE)
+
+        return self._crossing(surplus)
 
     def measurable_diameter(self) -> float | None:
         """Diameter of an air void from which the 95 % interval of its fitted volume lies within ±25 %."""

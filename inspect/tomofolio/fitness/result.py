@@ -18,7 +18,7 @@ class Fitness:
     Gaussian that fits the whole edge response, the voxel's own width included, along [slice, row, column], and
     ``blur_sigma_mm`` their geometric mean; ``mtf10_per_mm`` the spatial frequency where the modulation transfer
     function falls to 10 %; ``detectable_diameter_mm`` and ``measurable_diameter_mm`` are theoretical limits for a lone
-    spherical air void: found with 95 % probability at one false call in 10⁸ voxels, and its volume's 95 % interval
+    spherical air void: found with 95 % probability by the rule of `detection`, and its volume's 95 % interval
     within ±25 % (see `tomofolio.fitness.limits`).
     """
 

@@ -105,22 +105,13 @@ def about_artefacts(
 
 
 def about_geometry(grid: Grid, body: Body) -> list[Remark]:
-    """Spacing, gaps, tilt, and how many voxels the object has across."""
+    """Spacing, and how many voxels the object has across; gaps and tilt are told by the intake."""
     remarks = []
     slices, rows, columns = grid.spacing_mm
     if grid.shape[0] > 1 and slices > 2 * max(rows, columns):
         ratio = slices / max(rows, columns)
         text = f"The slices are {ratio:.1f} times as far apart as the pixels; detail across the slices is lost."
         remarks.append(Remark("slices-far-apart", _CAUTION, text))
-    if not grid.is_even:
-        gaps = grid.slice_distances_mm
-        text = (
-            f"The gaps between slices differ, from {gaps.min():.3g} to {gaps.max():.3g} mm; all figures allow for it."
-        )
-        remarks.append(Remark("slice-gaps-uneven", _NOTE, text))
-    if grid.tilt_degrees > 0.1:
-        text = f"The slices are tilted by {grid.tilt_degrees:.1f}° against their axis; all figures allow for it."
-        remarks.append(Remark("slices-tilted", _NOTE, text))
     across = min(cut.stop - cut.start for cut in body.box[1:])
     if across < 32:
         text = f"The object is only {across} pixels across; its surface and volume are coarse."

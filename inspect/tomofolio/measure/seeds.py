@@ -11,17 +11,12 @@ from numpy.typing import NDArray
 
 from tomofolio.body.result import Body
 from tomofolio.body.runs import Runs, find_runs
+from tomofolio.fitness.detection import FALSE_CALL_DEVIATIONS, SMALLEST_SHARE
 from tomofolio.fitness.result import Fitness
 from tomofolio.measure.level import CELL, LevelField
 from tomofolio.volume import Volume
 
 Array = NDArray[Any]
-
-#: A mean of 3 × 3 × 3 voxels must differ by this many of its standard deviations: one false call in 10⁸ voxels is
-#: expected at 5.6 for normal noise; the rest is for noise that is not quite normal.
-FALSE_CALL_DEVIATIONS = 6.0
-#: … and by this share of the contrast, so that faint structure of the material itself is not reported.
-SMALLEST_SHARE = 0.1
 
 _DARK, _BRIGHT = 1, 2
 
