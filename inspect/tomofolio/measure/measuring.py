@@ -5,7 +5,7 @@ from __future__ import annotations
 from tomofolio.body.result import Body
 from tomofolio.fitness.result import Fitness
 from tomofolio.measure.level import level_field
-from tomofolio.measure.outside_surface import outside_points_mm
+from tomofolio.measure.outside_surface import outside_points
 from tomofolio.measure.part import part_figures
 from tomofolio.measure.range_figures import range_figures
 from tomofolio.measure.result import Findings, Spot
@@ -34,17 +34,25 @@ def measure(volume: Volume, ranges: Ranges, body: Body, fitness: Fitness, *, loo
         text = "Without background nothing says what an empty place looks like: no voids are measured."
         remarks.append(Remark("voids-need-background", Severity.CAUTION, text))
         look_for_voids = False
-    if look_for_voids:
-        field = level_field(volume, ranges, body)
-        outside = outside_points_mm(volume, body)
-        voids, inclusions = find_spots(volume, ranges, body, fitness, field, outside)
+    field = level_field(volume, ranges, body) if ranges.background is not None else None
+    surface = outside_points(volume, body)
+    if look_for_voids and field is not None:
+        voids, inclusions = find_spots(volume, ranges, body, fitness, field, volume.grid.to_mm(surface))
         text = (
             "Pockets that reach the outside are part of the outside: they are not listed and not in the sums. "
             "Voids nearer to the outside than the edge blur reaches (2 σ + 1 voxels) are not looked for."
         )
         remarks.append(Remark("open-pockets-not-listed", Severity.NOTE, text))
-    total = sum(item.volume_mm3 for item in voids if not item.open)
-    part = part_figures(volume, ranges, body, fitness, closed_voids_mm3=total, closed_voids_sd_mm3=total_sd_mm3(voids))
+    part = part_figures(
+        volume,
+        ranges,
+        body,
+        fitness,
+        field,
+        surface,
+        closed_voids_mm3=sum(item.volume_mm3 for item in voids if not item.open),
+        closed_voids_sd_mm3=total_sd_mm3(voids),
+    )
     return Findings(
         ranges=figures,
         part=part,

@@ -1,4 +1,4 @@
-"""Points on the outside surface of the part, to sub-voxel accuracy, for distances in millimetres on any grid."""
+"""Points on the outside surface of the part, to sub-voxel accuracy."""
 
 from __future__ import annotations
 
@@ -14,15 +14,18 @@ from tomofolio.volume import Volume
 Array = NDArray[Any]
 
 
-def outside_points_mm(volume: Volume, body: Body) -> NDArray[np.float64]:
-    """Shape (n, 3), LPS: where the values cross the threshold between an object voxel and an outside neighbour."""
+def outside_points(volume: Volume, body: Body) -> NDArray[np.float64]:
+    """Indices [slice, row, column], shape (n, 3), where the values cross the threshold.
+
+    One point for every pair of an object voxel and an outside voxel that share a face.
+    """
     if body.threshold is None:
         return np.empty((0, 3))
     box = np.array([(part.start, part.stop) for part in body.box])
     arguments = (volume.stored, volume.slope, volume.intercept, body.regions, box, float(body.threshold))
     points = np.empty((_count(body.regions, box), 3), np.float32)
     _fill(*arguments, points)
-    return volume.grid.to_mm(points.astype(np.float64))
+    return points.astype(np.float64)
 
 
 @njit(cache=True)
