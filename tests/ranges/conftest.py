@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Sequence
 from dataclasses import replace
 from pathlib import Path
 
@@ -14,7 +14,6 @@ from scipy import ndimage
 from tomofolio.volume import Basis, Grid, Unit, Volume
 
 SHARED = Path(__file__).resolve().parents[3] / "shared" / "data"
-DEMO = Path(__file__).resolve().parents[2] / "demo_data"
 
 
 def to_volume(stored, slope=1.0, intercept=0.0, no_data=None) -> Volume:
@@ -116,11 +115,6 @@ def engine() -> Volume:
 @pytest.fixture(scope="session")
 def head() -> Volume:
     return _scan(SHARED / "head_tilted_uneven")
-
-
-@pytest.fixture(scope="session")
-def demo() -> Callable[[str], Volume]:
-    return lambda name: _scan(DEMO / name)
 
 
 class Phantoms:

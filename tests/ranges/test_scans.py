@@ -1,4 +1,4 @@
-"""Real scans that were not drawn by anyone here, and the project's own demo scans."""
+"""Real scans that were not drawn by anyone here."""
 
 from __future__ import annotations
 
