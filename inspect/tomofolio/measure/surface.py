@@ -1,4 +1,4 @@
-"""Surface area of the filled object by the Crofton formula, on any grid."""
+"""Area of the outside surface, counted along 13 directions (Crofton's formula)."""
 
 from __future__ import annotations
 
@@ -13,68 +13,80 @@ from tomofolio.body.result import Body
 from tomofolio.volume import Grid
 
 Array = NDArray[Any]
+Floats = NDArray[np.float64]
 
-#: One of every pair of opposite steps to the 26 neighbours [slice, row, column].
+#: Index steps (slice, row, column) to the 13 neighbours on one side; the first four stay within the slice.
 STEPS = np.array(
-    [(k, j, i) for k in (-1, 0, 1) for j in (-1, 0, 1) for i in (-1, 0, 1) if (k, j, i) > (0, 0, 0)], np.int64
+    [(0, 0, 1), (0, 1, -1), (0, 1, 0), (0, 1, 1)] + [(1, j, i) for j in (-1, 0, 1) for i in (-1, 0, 1)], np.int64
 )
+IN_SLICE = 4
 
 
 def surface_area_mm2(body: Body, grid: Grid) -> float:
     """Area between the filled object (object and what it encloses) and the outside, bores included.
 
-    Crofton's formula over 13 directions: every direction is weighted with the solid angle that is nearest to it
-    (spherical Voronoi cells of the true directions in mm, so unequal spacing and tilt are allowed for), and the
-    changes between object and outside along its lines are counted. Where the object is cut by the border of the scan
-    there is no surface.
+    Lines run through the voxels along 13 directions. Crofton's formula says that the area is twice the mean, over all
+    directions, of the crossings times the area per line; each of the 13 stands for the directions nearest to it (the
+    area of its spherical Voronoi cell, from the true directions in mm). Method: Ohser & Mücklich, Statistical Analysis
+    of Microstructures in Materials Science, 2000, ch. 4; weights by Voronoi cells after Lehmann & Legland, Insight
+    Journal 2012. Where slices stand unevenly, every gap has its own directions and weights.
 
-    References
-    ----------
-    G. Lehmann and D. Legland, Efficient N-dimensional surface estimation using Crofton formula and run-length
-    encoding, Insight Journal (2012). Cauchy–Crofton: the mean over all directions of the changes per area of
-    cross-section is half of the surface.
+    Where the scan cuts the object, the cut is no surface: only faces to voxels that are known to be outside count,
+    neither the border of the scan nor faces to things left out.
     """
-    box = np.array([(part.start, part.stop) for part in body.box])
-    changes = np.zeros((grid.shape[0], len(STEPS)), np.int64)
-    _count_changes(body.regions, box, STEPS, changes)
-    even = _steps_mm(grid, 0) if grid.is_even else None
-    even_weights = _solid_angles(even) if even is not None else None
-    total = 0.0
-    for k in np.flatnonzero(changes.any(axis=1)):
-        steps = even if even is not None else _steps_mm(grid, int(k))  # with uneven gaps every slice has its own
-        weights = even_weights if even_weights is not None else _solid_angles(steps)
-        lengths = np.linalg.norm(steps, axis=1)
-        total += float((weights * changes[k] / lengths).sum()) * float(grid.voxel_volumes_mm3[k])
-    return 2 * total
+    box = np.array([(part.start, part.stop) for part in body.box], np.int64)
+    crossings = np.zeros((grid.shape[0], len(STEPS)), np.int64)
+    if box[0, 0] == box[0, 1]:
+        return 0.0
+    low = np.maximum(box[:, 0] - 1, 0)
+    high = np.minimum(box[:, 1] + 1, np.array(grid.shape))
+    _count_crossings(body.regions, low, high, crossings)
+    return float((crossings * _areas_per_crossing(grid)).sum())
 
 
-def _steps_mm(grid: Grid, slice_index: int) -> NDArray[np.float64]:
-    """Shape (13, 3): the steps from a voxel of this slice, in mm."""
-    base = np.array([slice_index, 0, 0], float)
-    return grid.to_mm(base + STEPS) - grid.to_mm(base)
+def _areas_per_crossing(grid: Grid) -> Floats:
+    """Shape (slices, 13): area that one crossing stands for, between a slice and itself or the next slice."""
+    gaps = np.diff(grid.slice_positions_mm)
+    if not len(gaps):
+        gaps = np.array([np.sqrt(grid.row_spacing_mm * grid.column_spacing_mm)])
+    different, which = np.unique(np.round(gaps, 6), return_inverse=True)
+    area = np.stack([_areas_of_gap(grid, gap) for gap in different])[which]
+    result = np.zeros((grid.shape[0], len(STEPS)))
+    result[: len(area), IN_SLICE:] = area[: grid.shape[0], IN_SLICE:]
+    # A slice lies between two gaps and shares in both.
+    before, after = np.concatenate((area[:1], area)), np.concatenate((area, area[-1:]))
+    result[:, :IN_SLICE] = ((before + after) / 2)[: grid.shape[0], :IN_SLICE]
+    return result
 
 
-def _solid_angles(steps_mm: NDArray[np.float64]) -> NDArray[np.float64]:
-    """Shares of the sphere (sum 1) that lie nearest to each direction or its opposite."""
-    directions = steps_mm / np.linalg.norm(steps_mm, axis=1)[:, None]
-    areas = SphericalVoronoi(np.concatenate((directions, -directions))).calculate_areas()
-    return (areas[: len(directions)] + areas[len(directions) :]) / areas.sum()
-
-
-@njit(cache=True)
-def _filled(code: int) -> bool:
-    return code == 1 or code == 2
+def _areas_of_gap(grid: Grid, gap_mm: float) -> Floats:
+    """Shape (13,): 2 · weight · (voxel volume / step length) for slices that are ``gap_mm`` apart along their axis."""
+    spacing = np.array([gap_mm, grid.row_spacing_mm, grid.column_spacing_mm])
+    per_index = grid.direction[:, ::-1] * spacing  # columns: mm per slice, row, column
+    vectors = STEPS @ per_index.T
+    length = np.linalg.norm(vectors, axis=1)
+    unit = vectors / length[:, None]
+    cells = SphericalVoronoi(np.concatenate((unit, -unit))).calculate_areas()
+    weight = (cells[: len(unit)] + cells[len(unit) :]) / cells.sum()
+    return 2 * weight * abs(float(np.linalg.det(per_index))) / length
 
 
 @njit(cache=True, parallel=True)
-def _count_changes(regions: Array, box: Array, steps: Array, changes: Array) -> None:
-    """Pairs of voxels, one filled and one not, along every step; counted in the slice of the first."""
-    slices, rows, columns = regions.shape
-    for k in prange(max(box[0, 0] - 1, 0), min(box[0, 1] + 1, slices)):
-        for j in range(max(box[1, 0] - 1, 0), min(box[1, 1] + 1, rows)):
-            for i in range(max(box[2, 0] - 1, 0), min(box[2, 1] + 1, columns)):
-                here = _filled(regions[k, j, i])
-                for n in range(steps.shape[0]):
-                    a, b, c = k + steps[n, 0], j + steps[n, 1], i + steps[n, 2]
-                    if 0 <= a < slices and 0 <= b < rows and 0 <= c < columns:
-                        changes[k, n] += here != _filled(regions[a, b, c])
+def _count_crossings(regions: Array, low: Array, high: Array, crossings: Array) -> None:
+    """Per slice and step, pairs of voxels of which one is filled (codes 1, 2) and the other outside (0)."""
+    width = high[2] - low[2]
+    for k in prange(low[0], high[0]):
+        found = np.zeros(len(STEPS), np.int64)
+        for n in range(len(STEPS)):
+            dk, dj, di = STEPS[n]
+            if k + dk >= high[0]:
+                continue
+            for j in range(max(low[1], low[1] - dj), min(high[1], high[1] - dj)):
+                here, there = regions[k, j, low[2] : high[2]], regions[k + dk, j + dj, low[2] : high[2]]
+                count = np.int32(0)
+                for i in range(max(0, -di), min(width, width - di)):
+                    a, b = here[i], there[i + di]
+                    # One is 0 and the other is 1 or 2: their product is 0 and their sum 1 or 2.
+                    count += ((a == 0) & (np.uint8(b - 1) < 2)) | ((b == 0) & (np.uint8(a - 1) < 2))
+                found[n] += count
+        crossings[k] = found
