@@ -34,10 +34,10 @@ def measure(volume: Volume, ranges: Ranges, body: Body, fitness: Fitness, *, loo
         text = "Without background nothing says what an empty place looks like: no voids are measured."
         remarks.append(Remark("voids-need-background", Severity.CAUTION, text))
         look_for_voids = False
-    field = level_field(volume, ranges, body) if ranges.background is not None else None
-    surface = outside_points(volume, body)
-    if look_for_voids and field is not None:
-        voids, inclusions = find_spots(volume, ranges, body, fitness, field, volume.grid.to_mm(surface))
+    if look_for_voids:
+        field = level_field(volume, ranges, body)
+        outside = volume.grid.to_mm(outside_points(volume, body))
+        voids, inclusions = find_spots(volume, ranges, body, fitness, field, outside)
         text = (
             "Pockets that reach the outside are part of the outside: they are not listed and not in the sums. "
             "Voids nearer to the outside than the edge blur reaches (2 σ + 1 voxels) are not looked for."
@@ -48,8 +48,6 @@ def measure(volume: Volume, ranges: Ranges, body: Body, fitness: Fitness, *, loo
         ranges,
         body,
         fitness,
-        field,
-        surface,
         closed_voids_mm3=sum(item.volume_mm3 for item in voids if not item.open),
         closed_voids_sd_mm3=total_sd_mm3(voids),
     )
