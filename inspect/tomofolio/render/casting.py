@@ -1,4 +1,4 @@
-"""The ray kernel: walks one ray after the other from the front of the scan to its back. `rays` says what it computes."""
+"""The ray kernel: walks every ray from the front of the scan to its back. `rays` says what it computes."""
 
 from __future__ import annotations
 
@@ -6,24 +6,25 @@ import math
 from typing import Any
 
 import numpy as np
-from numba import njit
 from numpy.typing import NDArray
 
 from tomofolio.render.sampling import (
-    FAST,
     careful_gradient,
     careful_trilinear,
     find_slice,
     gradient,
+    helper,
+    kernel,
     trilinear,
 )
 
 Array = NDArray[Any]
 TILE = 16
 
-# What a block holds: 1 … FARTHEST = clear, with the distance to what is not clear, in blocks.
-# THIN = visible, but nowhere dense enough to be a surface: sampled with a longer stride.
-VISIBLE, FARTHEST, VISIBLE_WITH_HIDDEN, UNIFORM, THIN = 0, 249, 250, 251, 252
+# What a block holds. 1 … FARTHEST: clear, with the distance in blocks to what is not. UNIFORM + 1 … UNIFORM +
+# FARTHEST: all on one plateau of the table, with the distance to what is not. THIN: visible, but nowhere dense enough
+# to be a surface, so it is sampled with a longer stride.
+VISIBLE, FARTHEST, UNIFORM, VISIBLE_WITH_HIDDEN, THIN = 0, 100, 100, 250, 252
 STRIDE = 4
 
 #: Light is worked out anew when a ray has gained this much weight on a surface since the last time.
@@ -37,7 +38,7 @@ FAR = np.float32(1e30)
 ZERO, HALF, ONE = np.float32(0.0), np.float32(0.5), np.float32(1.0)
 
 
-@njit(cache=True, nogil=True, fastmath=FAST)
+@kernel
 def jitter_of(x: int, y: int) -> float:
     """0 … 1, fixed for each pixel: spreads the sample planes of neighbouring rays (an integer hash, no pattern)."""
     h = (x * 0x9E3779B1 + y * 0x85EBCA77) & 0xFFFFFFFF
@@ -49,7 +50,7 @@ def jitter_of(x: int, y: int) -> float:
     return float(h) / 4294967296.0
 
 
-@njit(cache=True, nogil=True, fastmath=FAST, forceinline=True)
+@helper
 def opacity(optical_depth: float) -> float:
     """1 − exp(−x); a series where the exponential would lose digits."""
     x = optical_depth
@@ -58,22 +59,18 @@ def opacity(optical_depth: float) -> float:
     return ONE - math.exp(-x)
 
 
-@njit(cache=True, nogil=True, fastmath=FAST)
-def ray_limits(start: Array, delta: Array, top: Array) -> tuple[float, float]:
-    """Where a line start + u · delta is inside the box 0 … top, as (first u, last u); first > last if nowhere."""
-    first, last = -1e30, 1e30
-    for axis in range(3):
-        if abs(delta[axis]) < 1e-9:
-            if start[axis] < -1e-4 or start[axis] > top[axis] + 1e-4:
-                return 1.0, 0.0
-            continue
-        a = -start[axis] / delta[axis]
-        b = (top[axis] - start[axis]) / delta[axis]
-        first, last = max(first, min(a, b)), min(last, max(a, b))
-    return first, last
+@kernel
+def axis_limits(start: float, delta: float, top: float) -> tuple[float, float]:
+    """Where start + u · delta is inside 0 … top, as (first u, last u); first > last if nowhere."""
+    if abs(delta) < 1e-9:
+        if start < -1e-4 or start > top + 1e-4:
+            return 1.0, 0.0
+        return -1e30, 1e30
+    a, b = -start / delta, (top - start) / delta
+    return min(a, b), max(a, b)
 
 
-@njit(cache=True, nogil=True, fastmath=FAST, forceinline=True)
+@helper
 def stretch_exit(low: int, high: int, n: int, base: float, inverse: float) -> float:
     """u at which a coordinate leaves the voxels low … high; the ends of the scan don't count."""
     if inverse > 0:
@@ -81,7 +78,7 @@ def stretch_exit(low: int, high: int, n: int, base: float, inverse: float) -> fl
     return FAR if low <= 0 else (np.float32(low) - base) * inverse
 
 
-@njit(cache=True, nogil=True, fastmath=FAST, forceinline=True)
+@helper
 def slice_exit(low: int, high: int, knots: Array, base: float, inverse: float) -> float:
     """`stretch_exit` along the slice axis, whose slices need not be even."""
     if inverse > 0:
@@ -89,17 +86,18 @@ def slice_exit(low: int, high: int, knots: Array, base: float, inverse: float) -
     return FAR if low <= 0 else (knots[low] - base) * inverse
 
 
-@njit(cache=True, nogil=True, fastmath=FAST, forceinline=True)
+@helper
 def cell_of(z: float, knots: Array, finder: Array, refine: float, even: bool) -> tuple[int, float]:
     """Slice below z and how far z is on the way to the next, 0 … 1."""
     if even:
         k = min(int(z), knots.shape[0] - 2)
         return k, z - np.float32(k)
     k = find_slice(z, knots, finder, refine)
-    return k, (z - knots[k]) / (knots[k + 1] - knots[k])
+    here = knots[np.uint64(k)]
+    return k, (z - here) / (knots[np.uint64(k + 1)] - here)
 
 
-@njit(cache=True, nogil=True, fastmath=FAST, forceinline=True)
+@helper
 def between(integrals: Array, channel: int, v0: float, v1: float) -> float:
     """Integral of the table from v0 to v1, in table steps."""
     e0, e1 = min(int(v0), integrals.shape[0] - 2), min(int(v1), integrals.shape[0] - 2)
@@ -109,7 +107,7 @@ def between(integrals: Array, channel: int, v0: float, v1: float) -> float:
     return b + q1 * (integrals[s1 + one, c] - b) - a - q0 * (integrals[s0 + one, c] - a)
 
 
-@njit(cache=True, nogil=True, fastmath=FAST, forceinline=True)
+@helper
 def shape_light(gz: float, gy: float, gx: float, normal: Array, light: Array) -> tuple[float, float, float]:
     """Light on matter with this gradient: (how surely it is a surface 0 … 1, diffuse |n·l|, gloss |n·h|^32)."""
     nx = normal[0, 0] * gz + normal[0, 1] * gy + normal[0, 2] * gx
@@ -128,7 +126,41 @@ def shape_light(gz: float, gy: float, gx: float, normal: Array, light: Array) ->
     return sure, lit, gloss * gloss
 
 
-@njit(cache=True, nogil=True, fastmath=FAST)
+@helper
+def needs_care(code: int, hidden_from: int) -> bool:
+    """Whether a block may hold hidden voxels: one that is clear may be so because of them."""
+    return code == VISIBLE_WITH_HIDDEN or (hidden_from < 255 and VISIBLE < code <= FARTHEST)
+
+
+@helper
+def settle(
+    red: float,
+    green: float,
+    blue: float,
+    through: float,
+    length: float,
+    moment: float,
+    entry: int,
+    integrals: Array,
+    step_mm: float,
+    fade_base: float,
+    light: Array,
+) -> tuple[float, float, float, float]:
+    """Composite a length (in steps) of matter that is all like one table entry; (red, green, blue, through) after it."""
+    e, one = np.uint64(entry), np.uint64(1)
+    thick = integrals[e + one, 0] - integrals[e, 0]
+    a = opacity(thick * length * step_mm)
+    weight = through * a
+    haze = min(max(fade_base + moment / length * light[11], ZERO), ONE)
+    keep = weight * (ONE - haze) * light[16] / max(thick, np.float32(1e-30))
+    haze *= weight
+    red += keep * (integrals[e + one, 1] - integrals[e, 1]) + haze * light[13]
+    green += keep * (integrals[e + one, 2] - integrals[e, 2]) + haze * light[14]
+    blue += keep * (integrals[e + one, 3] - integrals[e, 3]) + haze * light[15]
+    return red, green, blue, through * (ONE - a)
+
+
+@kernel
 def cast_rows(
     stored: Array,
     hidden: Array,
@@ -144,6 +176,7 @@ def cast_rows(
     refine: float,
     even: bool,
     blocks: Array,
+    block_plateau: Array,
     integrals: Array,
     plateau: Array,
     geometry: Array,
@@ -159,6 +192,7 @@ def cast_rows(
     Parameters
     ----------
     blocks : flat, uint8, by slice, row and column of blocks; see the constants above.
+    block_plateau : flat, int32, the plateau of every uniform block.
     integrals : shape (entries, 4), running integrals of density and density × colour.
     plateau : shape (entries,): number of the plateau (equal entries) an entry lies on and is thin enough to be lit
         evenly; −1 elsewhere. Stretches on one plateau are summed and composited at once.
@@ -171,169 +205,174 @@ def cast_rows(
     block_rows, block_columns = (rows - 2) // 8 + 1, (columns - 2) // 8 + 1
     last_entry = integrals.shape[0] - 1
     highest = f(last_entry)
-    top = np.array([float(knots[slices - 1]), rows - 1.0, columns - 1.0])
-    delta = geometry[3]
-    dz, dy, dx = f(delta[0]), f(delta[1]), f(delta[2])
+    step_z, step_y, step_x = geometry[3, 0], geometry[3, 1], geometry[3, 2]
+    dz, dy, dx = f(step_z), f(step_y), f(step_x)
     iz = ONE / dz if abs(dz) > 1e-9 else f(1e12)
     iy = ONE / dy if abs(dy) > 1e-9 else f(1e12)
     ix = ONE / dx if abs(dx) > 1e-9 else f(1e12)
     ambient, diffuse, specular = light[6], light[7], light[8]
     fade_step, fade_start = light[11], light[12]
-    ground_r, ground_g, ground_b = light[13], light[14], light[15]
     neutral, surface_from = light[16], light[17]
-    start = np.empty(3)
 
     for tile in range(0, out.shape[1], TILE):
         for py in range(first_row, last_row):
             for px in range(tile, min(tile + TILE, out.shape[1])):
-                for axis in range(3):
-                    start[axis] = geometry[0, axis] + px * geometry[1, axis] + py * geometry[2, axis]
-                u_in, u_out = ray_limits(start, delta, top)
+                start_z = geometry[0, 0] + px * geometry[1, 0] + py * geometry[2, 0]
+                start_y = geometry[0, 1] + px * geometry[1, 1] + py * geometry[2, 1]
+                start_x = geometry[0, 2] + px * geometry[1, 2] + py * geometry[2, 2]
+                in_z, out_z = axis_limits(start_z, step_z, float(knots[slices - 1]))
+                in_y, out_y = axis_limits(start_y, step_y, rows - 1.0)
+                in_x, out_x = axis_limits(start_x, step_x, columns - 1.0)
+                u_in, u_out = max(in_z, in_y, in_x), min(out_z, out_y, out_x)
                 if not u_in < u_out:
                     continue
                 jitter = jitter_of(px, py)
                 origin = u_in + jitter  # from here on u counts steps from the first whole sample
-                bz = f(start[0] + origin * delta[0])
-                by = f(start[1] + origin * delta[1])
-                bx = f(start[2] + origin * delta[2])
+                bz = f(start_z + origin * step_z)
+                by = f(start_y + origin * step_y)
+                bx = f(start_x + origin * step_x)
                 end = f(u_out - origin)
                 fade_base = fade_start + f(origin) * fade_step
                 through, red, green, blue = ONE, ZERO, ZERO, ZERO
                 u, n = f(-jitter), 0  # where the ray stands, and its next whole sample
-                known, v0 = False, ZERO
+                stop = -1  # the last whole sample in the block where the ray stands
+                known, v0, landing = False, ZERO, ZERO
                 lit, gloss, unlit = neutral, ZERO, ONE
-                code, k, j, i = 0, 0, 0, 0
-                waiting, waiting_on, waiting_middle = ZERO, 0, ZERO  # length on a plateau, not composited yet
-                while True:
-                    # 1. the cell where the ray stands (known from the last sample unless it has leapt)
-                    done = u >= end
-                    on, v1, t = -1, v0, u
-                    lone = False
-                    if not done:
+                code, k, j, i, fz, block, uniform = 0, 0, 0, 0, ZERO, np.uint64(0), False
+                waiting, waiting_on, middle = ZERO, 0, ZERO  # length on a plateau, not composited yet, and its moment
+                while u < end:
+                    # 1. a new block: leap over it where it is clear
+                    if not known or n > stop + 1:
                         if not known:
-                            z = bz + u * dz
-                            y = by + u * dy
-                            x = bx + u * dx
+                            z, y, x = bz + u * dz, by + u * dy, bx + u * dx
                             k, fz = cell_of(z, knots, finder, refine, even)
                             j, i = min(int(y), rows - 2), min(int(x), columns - 2)
-                            code = blocks[np.uint64(((k >> 3) * block_rows + (j >> 3)) * block_columns + (i >> 3))]
-                        # 2. leap where the block allows it
-                        stride = 1
-                        if code != VISIBLE and code != VISIBLE_WITH_HIDDEN:
-                            reach = int(code) if code <= FARTHEST else 1
-                            low, high = ((k >> 3) - reach + 1) * 8, ((k >> 3) + reach) * 8
-                            leave = slice_exit(low, high, knots, bz, iz)
-                            low, high = ((j >> 3) - reach + 1) * 8, ((j >> 3) + reach) * 8
-                            leave = min(leave, stretch_exit(low, high, rows, by, iy))
-                            low, high = ((i >> 3) - reach + 1) * 8, ((i >> 3) + reach) * 8
-                            leave = min(leave, stretch_exit(low, high, columns, bx, ix))
-                            landing = end if leave >= end else f(math.floor(leave))
-                            if code == THIN:
-                                stride = STRIDE if landing >= f(n + STRIDE - 1) else 1
-                            elif landing > u:
-                                if code != UNIFORM:
-                                    n = int(landing) + 1
-                                    u, known, unlit = landing, False, ONE
-                                    continue
-                                if not known:
-                                    o = (k * rows + j) * columns + i
-                                    v0 = trilinear(
-                                        stored, o, columns, layer, k, fz, y - f(j), x - f(i), scale, offset
-                                    )  # fmt: skip
-                                    v0 = min(max(v0, ZERO), highest)
-                                t, v1, lone = landing, v0, True
-                                n = int(landing) + 1
-                        if not lone:
-                            # 3. the values at both ends of the stretch
-                            careful = code == VISIBLE_WITH_HIDDEN
-                            if not known:
-                                if careful:
-                                    v0 = careful_trilinear(
-                                        stored, hidden, hidden_from, slices, rows, columns,
-                                        k, j, i, fz, y - f(j), x - f(i), scale, offset, empty,
-                                    )  # fmt: skip
-                                else:
-                                    o = (k * rows + j) * columns + i
-                                    v0 = trilinear(
-                                        stored, o, columns, layer, k, fz, y - f(j), x - f(i), scale, offset
-                                    )  # fmt: skip
-                                v0 = min(max(v0, ZERO), highest)
-                            n += stride
-                            t = min(f(n - 1), end)
-                            z = bz + t * dz
-                            y = by + t * dy
-                            x = bx + t * dx
-                            k, fz = cell_of(z, knots, finder, refine, even)
-                            j, i = min(int(y), rows - 2), min(int(x), columns - 2)
-                            code = blocks[np.uint64(((k >> 3) * block_rows + (j >> 3)) * block_columns + (i >> 3))]
-                            if code == VISIBLE_WITH_HIDDEN:
-                                careful = True
-                                v1 = careful_trilinear(
+                        bk, bj, bi = k >> 3, j >> 3, i >> 3
+                        block = np.uint64((bk * block_rows + bj) * block_columns + bi)
+                        code = int(blocks[block])
+                        reach = 1
+                        if code <= UNIFORM + FARTHEST:
+                            reach = max(code if code <= FARTHEST else code - UNIFORM, 1)
+                        leave = slice_exit((bk - reach + 1) * 8, (bk + reach) * 8, knots, bz, iz)
+                        leave = min(leave, stretch_exit((bj - reach + 1) * 8, (bj + reach) * 8, rows, by, iy))
+                        leave = min(leave, stretch_exit((bi - reach + 1) * 8, (bi + reach) * 8, columns, bx, ix))
+                        landing = min(leave, end)
+                        stop = math.floor(landing)
+                        if leave < end:
+                            landing = f(stop)
+                        if VISIBLE < code <= FARTHEST and landing > u:
+                            u, n, known, unlit = landing, stop + 1, False, ONE
+                            continue
+                        uniform = UNIFORM < code <= UNIFORM + FARTHEST and landing > u
+                        if not known and not uniform:
+                            o = (k * rows + j) * columns + i
+                            if needs_care(code, hidden_from):
+                                v0 = careful_trilinear(
                                     stored, hidden, hidden_from, slices, rows, columns,
                                     k, j, i, fz, y - f(j), x - f(i), scale, offset, empty,
                                 )  # fmt: skip
                             else:
+                                v0 = trilinear(stored, o, columns, layer, k, fz, y - f(j), x - f(i), scale, offset)
+                            v0 = min(max(v0, ZERO), highest)
+                            known = True
+                    careful = needs_care(code, hidden_from)
+                    stride = STRIDE if code == THIN else 1
+                    on = block_plateau[block] if uniform else plateau[np.uint64(v0)]
+                    t, v1, read = u, v0, False
+                    # 2. matter that is all alike only adds to what waits
+                    if on >= 0:
+                        if waiting > ZERO and on != waiting_on:
+                            red, green, blue, through = settle(
+                                red, green, blue, through, waiting, middle, waiting_on, integrals, step_mm, fade_base, light
+                            )  # fmt: skip
+                            waiting = middle = ZERO
+                        if uniform:
+                            t, n, known = landing, stop + 1, False
+                        elif not careful:
+                            while n + stride <= stop + 1:
+                                at = f(n + stride - 1)
+                                z, y, x = bz + at * dz, by + at * dy, bx + at * dx
+                                k, fz = cell_of(z, knots, finder, refine, even)
+                                j, i = min(int(y), rows - 2), min(int(x), columns - 2)
                                 o = (k * rows + j) * columns + i
                                 v1 = trilinear(stored, o, columns, layer, k, fz, y - f(j), x - f(i), scale, offset)
-                            v1 = min(max(v1, ZERO), highest)
-                        on = plateau[np.uint64(v0)]
-                        if on >= 0 and on != plateau[np.uint64(v1)]:
-                            on = -1
-                        # 4. matter that is all alike only adds to what waits
-                        if on >= 0 and (waiting == ZERO or on == waiting_on):
-                            waiting_on = on
-                            waiting_middle += (t - u) * HALF * (u + t)
+                                v1 = min(max(v1, ZERO), highest)
+                                n += stride
+                                read = plateau[np.uint64(v1)] != on
+                                if read:
+                                    break
+                                t, v0 = at, v1
+                        if t > u:
+                            waiting_on, unlit = on, ONE
                             waiting += t - u
-                            u, v0, known = t, v1, not lone
-                            continue
-                    # 5. composite what waits, before anything that comes after it
-                    if waiting > ZERO:
-                        e = waiting_on
-                        thick = integrals[e + 1, 0] - integrals[e, 0]
-                        if thick > ZERO:
-                            a = opacity(thick * waiting * step_mm)
-                            haze = min(max(fade_base + waiting_middle / waiting * fade_step, ZERO), ONE)
-                            weight = through * a
-                            keep = weight * (ONE - haze) * neutral / thick
-                            haze *= weight
-                            red += keep * (integrals[e + 1, 1] - integrals[e, 1]) + haze * ground_r
-                            green += keep * (integrals[e + 1, 2] - integrals[e, 2]) + haze * ground_g
-                            blue += keep * (integrals[e + 1, 3] - integrals[e, 3]) + haze * ground_b
-                            through *= ONE - a
-                        waiting = waiting_middle = ZERO
-                        if through < OPAQUE:
-                            break
-                    if done:
-                        break
-                    if on >= 0:
-                        waiting_on, waiting, waiting_middle = on, t - u, (t - u) * HALF * (u + t)
-                        u, v0, known = t, v1, not lone
-                        continue
-                    # 6. a stretch of its own
-                    if abs(v1 - v0) < HALF:  # too close for a difference of integrals: one table step around them
-                        middle = min(max(HALF * (v0 + v1), HALF), highest - HALF)
-                        va, vb = middle - HALF, middle + HALF
+                            middle += (t - u) * HALF * (u + t)
+                            u = t
+                            if not read:
+                                continue
+                    # 3. the value at the far end of a stretch of its own
+                    if read:
+                        t = f(n - 1)
                     else:
-                        va, vb = v0, v1
-                    part = ONE / (vb - va)
-                    thick = part * between(integrals, 0, va, vb)
-                    depth = thick * (t - u) * step_mm
-                    if depth > NOTHING:
-                        part /= thick
+                        n += stride if n + stride <= stop + 1 else 1
+                        t = min(f(n - 1), end)
+                        z, y, x = bz + t * dz, by + t * dy, bx + t * dx
+                        k, fz = cell_of(z, knots, finder, refine, even)
+                        j, i = min(int(y), rows - 2), min(int(x), columns - 2)
+                        if n > stop + 1:
+                            beyond = np.uint64(((k >> 3) * block_rows + (j >> 3)) * block_columns + (i >> 3))
+                            careful = careful or needs_care(int(blocks[beyond]), hidden_from)
+                        if careful:
+                            v1 = careful_trilinear(
+                                stored, hidden, hidden_from, slices, rows, columns,
+                                k, j, i, fz, y - f(j), x - f(i), scale, offset, empty,
+                            )  # fmt: skip
+                        else:
+                            o = (k * rows + j) * columns + i
+                            v1 = trilinear(stored, o, columns, layer, k, fz, y - f(j), x - f(i), scale, offset)
+                        v1 = min(max(v1, ZERO), highest)
+                        if on >= 0 and plateau[np.uint64(v1)] == on:
+                            waiting_on, unlit = on, ONE
+                            waiting += t - u
+                            middle += (t - u) * HALF * (u + t)
+                            u, v0 = t, v1
+                            continue
+                    # 4. what waits comes before it
+                    if waiting > ZERO:
+                        red, green, blue, through = settle(
+                            red, green, blue, through, waiting, middle, waiting_on, integrals, step_mm, fade_base, light
+                        )  # fmt: skip
+                        waiting = middle = ZERO
+                    # 5. one more value half-way: where the table bends, the value does not run straight
+                    um = HALF * (u + t)
+                    zm, ym, xm = bz + um * dz, by + um * dy, bx + um * dx
+                    km, fm = cell_of(zm, knots, finder, refine, even)
+                    jm, im = min(int(ym), rows - 2), min(int(xm), columns - 2)
+                    o = (km * rows + jm) * columns + im
+                    if careful:
+                        vm = careful_trilinear(
+                            stored, hidden, hidden_from, slices, rows, columns,
+                            km, jm, im, fm, ym - f(jm), xm - f(im), scale, offset, empty,
+                        )  # fmt: skip
+                    else:
+                        vm = trilinear(stored, o, columns, layer, km, fm, ym - f(jm), xm - f(im), scale, offset)
+                    vm = min(max(vm, ZERO), highest)
+                    for part in range(2):
+                        va, vb = (vm, v1) if part else (v0, vm)
+                        if abs(vb - va) < HALF:  # too close for a difference of integrals: one table step around them
+                            va = min(max(HALF * (va + vb), HALF), highest - HALF) - HALF
+                            vb = va + ONE
+                        inverse = ONE / (vb - va)
+                        thick = inverse * between(integrals, 0, va, vb)
+                        depth = thick * HALF * (t - u) * step_mm
+                        if depth <= NOTHING:
+                            continue
                         a = opacity(depth)
                         weight = through * a
-                        um = HALF * (u + t)
                         haze = min(max(fade_base + um * fade_step, ZERO), ONE)
                         if thick <= surface_from:
-                            lit, gloss = neutral, ZERO
-                            unlit = ONE
+                            lit, gloss, unlit = neutral, ZERO, ONE
                         elif unlit + weight > RELIGHT:
                             unlit = ZERO
-                            zm = bz + um * dz
-                            ym = by + um * dy
-                            xm = bx + um * dx
-                            km, fm = cell_of(zm, knots, finder, refine, even)
-                            jm, im = min(int(ym), rows - 2), min(int(xm), columns - 2)
                             inner = km > 0 and jm > 0 and im > 0
                             inner = inner and km < slices - 2 and jm < rows - 2 and im < columns - 2
                             if careful or not inner:
@@ -342,7 +381,6 @@ def cast_rows(
                                     km, jm, im, fm, ym - f(jm), xm - f(im), scale, offset, knots, empty,
                                 )  # fmt: skip
                             else:
-                                o = (km * rows + jm) * columns + im
                                 gz, gy, gx = gradient(
                                     stored, o, columns, layer, km, fm, ym - f(jm), xm - f(im), scale, offset, knots
                                 )  # fmt: skip
@@ -353,16 +391,20 @@ def cast_rows(
                         else:
                             unlit += weight
                         shine = weight * (ONE - haze)
-                        keep = shine * lit * part
+                        keep = shine * lit * inverse / thick
                         shine *= gloss
                         haze *= weight
-                        red += keep * between(integrals, 1, va, vb) + shine + haze * ground_r
-                        green += keep * between(integrals, 2, va, vb) + shine + haze * ground_g
-                        blue += keep * between(integrals, 3, va, vb) + shine + haze * ground_b
+                        red += keep * between(integrals, 1, va, vb) + shine + haze * light[13]
+                        green += keep * between(integrals, 2, va, vb) + shine + haze * light[14]
+                        blue += keep * between(integrals, 3, va, vb) + shine + haze * light[15]
                         through *= ONE - a
-                        if through < OPAQUE:
-                            break
-                    u, v0, known = t, v1, True
+                    u, v0 = t, v1
+                    if through < OPAQUE:
+                        break
+                if waiting > ZERO:
+                    red, green, blue, through = settle(
+                        red, green, blue, through, waiting, middle, waiting_on, integrals, step_mm, fade_base, light
+                    )  # fmt: skip
                 out[py, px, 0] = red
                 out[py, px, 1] = green
                 out[py, px, 2] = blue

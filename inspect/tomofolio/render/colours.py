@@ -50,13 +50,15 @@ def on_ground(rgba: NDArray[np.float32]) -> NDArray[np.uint8]:
 
 
 def ordered_colours(count: int) -> list[tuple[int, int, int]]:
-    """``count`` sRGB colours along the palette, from low to high values, evenly spaced.
+    """``count`` sRGB colours along the palette, from low to high values.
 
-    One colour alone is the palette's second: it reads as a solid on the ground.
+    Few ranges take neighbouring colours around the middle of the palette, where they read best on the ground; more
+    than the palette has are spaced evenly along it.
     """
-    if count == 1:
-        return [PALETTE[1]]
-    at = np.linspace(0, len(PALETTE) - 1, count) if count > 2 else np.array([1.0, 2.0])
+    if count <= len(PALETTE):
+        first = 0 if count > 2 else 1
+        return list(PALETTE[first : first + count])
     knots = decode_srgb(np.array(PALETTE) / 255)
+    at = np.linspace(0, len(PALETTE) - 1, count)
     linear = np.column_stack([np.interp(at, np.arange(len(PALETTE)), knots[:, c]) for c in range(3)])
     return [(int(r), int(g), int(b)) for r, g, b in np.rint(encode_srgb(linear) * 255)]

@@ -14,11 +14,11 @@ from functools import cached_property
 from typing import Any
 
 import numpy as np
-from numba import get_num_threads, njit
+from numba import get_num_threads
 from numpy.typing import NDArray
 
 from tomofolio.body.result import Body, Region
-from tomofolio.render.sampling import FAST, sample_points
+from tomofolio.render.sampling import kernel, sample_points
 from tomofolio.volume import Volume
 
 Array = NDArray[Any]
@@ -182,7 +182,7 @@ def _read_only(array: Array) -> Array:
     return flat
 
 
-@njit(cache=True, nogil=True, fastmath=FAST)
+@kernel
 def _block_limits(
     stored: Array,
     hidden: Array,

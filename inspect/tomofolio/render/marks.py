@@ -32,13 +32,13 @@ def direction_letters(direction: ArrayLike, kind: Kind) -> str:
 def orientation_letters(camera: Camera, kind: Kind, margin: float, foot: float) -> tuple[Caption, ...]:
     """Letters in the middle of the four margins: what lies to the left, right, top and bottom."""
     right, down, _ = camera.axes
-    w, h = camera.width, camera.height
+    w, h, edge = camera.width, camera.height, 0.22 * margin
     middle = (h - foot) / 2
     return (
-        Caption((margin / 2, middle), direction_letters(-right, kind), "letter"),
-        Caption((w - margin / 2, middle), direction_letters(right, kind), "letter"),
-        Caption((w / 2, margin / 2), direction_letters(-down, kind), "letter"),
-        Caption((w / 2, h - foot - margin / 2), direction_letters(down, kind), "letter"),
+        Caption((edge, middle), direction_letters(-right, kind), "letter", "left-middle"),
+        Caption((w - edge, middle), direction_letters(right, kind), "letter", "right-middle"),
+        Caption((w / 2, edge), direction_letters(-down, kind), "letter", "centre-top"),
+        Caption((w / 2, h - foot - edge), direction_letters(down, kind), "letter", "centre-bottom"),
     )
 
 

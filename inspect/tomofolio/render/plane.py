@@ -2,16 +2,16 @@
 
 from __future__ import annotations
 
+import math
 from typing import Any
 
 import numpy as np
-from numba import njit
 from numpy.typing import NDArray
 
 from tomofolio.render.camera import Camera
-from tomofolio.render.casting import TILE, cell_of, ray_limits, slice_exit, stretch_exit
+from tomofolio.render.casting import TILE, axis_limits, cell_of, slice_exit, stretch_exit
 from tomofolio.render.field import RayField, over_parts
-from tomofolio.render.sampling import FAST, careful_trilinear, trilinear
+from tomofolio.render.sampling import careful_trilinear, helper, kernel, trilinear
 
 Array = NDArray[Any]
 
@@ -24,8 +24,8 @@ def section(field: RayField, camera: Camera) -> NDArray[np.float32]:
 def project_maximum(field: RayField, camera: Camera, empty: float) -> NDArray[np.float32]:
     """Largest value along every ray of the camera.
 
-    Values are read where the ray meets the planes of voxels across its main axis, and half-way between them. Along
-    an axis of the grid this is the exact maximum of the trilinear values: between planes they are linear.
+    Values are read where the ray meets the planes of voxels across its main axis, and half-way between them unless it
+    runs along the axis itself: then the values between are linear, and this is their exact maximum.
 
     Parameters
     ----------
@@ -37,7 +37,9 @@ def project_maximum(field: RayField, camera: Camera, empty: float) -> NDArray[np
     """
     along = field.mm_to_index @ camera.axes[2]
     axis = int(np.argmax(np.abs(along)))
-    step = along / abs(along[axis]) / 2
+    step = along / abs(along[axis])
+    if np.abs(np.delete(step, axis)).max() > 1e-6:
+        step /= 2
     start = (camera.first_pixel_mm - field.origin_mm) @ field.mm_to_index.T
     right, down = field.mm_to_index @ camera.axes[0], field.mm_to_index @ camera.axes[1]
     geometry = np.stack((start, right * camera.mm_per_pixel, down * camera.mm_per_pixel, step))
@@ -57,7 +59,14 @@ def project_maximum(field: RayField, camera: Camera, empty: float) -> NDArray[np
     return out
 
 
-@njit(cache=True, nogil=True, fastmath=FAST)
+@helper
+def on_voxel(at: float) -> float:
+    """The whole number next to ``at`` where it is within rounding of it."""
+    whole = math.floor(at + 0.5)
+    return whole if abs(at - whole) < 1e-4 else at
+
+
+@kernel
 def _project_rows(
     stored: Array,
     hidden: Array,
@@ -84,33 +93,33 @@ def _project_rows(
     f = np.float32
     layer = rows * columns
     block_rows, block_columns = (rows - 2) // 8 + 1, (columns - 2) // 8 + 1
-    top = np.array([float(knots[slices - 1]), rows - 1.0, columns - 1.0])
-    delta = geometry[3]
-    dz, dy, dx = f(delta[0]), f(delta[1]), f(delta[2])
+    top_z = knots[slices - 1]
+    step_z, step_y, step_x = geometry[3, 0], geometry[3, 1], geometry[3, 2]
+    dz, dy, dx = f(step_z), f(step_y), f(step_x)
     iz = f(1.0) / dz if abs(dz) > 1e-9 else f(1e12)
     iy = f(1.0) / dy if abs(dy) > 1e-9 else f(1e12)
     ix = f(1.0) / dx if abs(dx) > 1e-9 else f(1e12)
-    start = np.empty(3)
     for tile in range(0, out.shape[1], TILE):
         for py in range(first_row, last_row):
             for px in range(tile, min(tile + TILE, out.shape[1])):
-                for a in range(3):
-                    start[a] = geometry[0, a] + px * geometry[1, a] + py * geometry[2, a]
-                to_plane = -start[axis] / delta[axis]  # u = 0 on the first voxel plane of the main axis
-                for a in range(3):
-                    start[a] += to_plane * delta[a]
-                    if abs(start[a] - round(start[a])) < 1e-4:
-                        start[a] = round(start[a])
-                u_in, u_out = ray_limits(start, delta, top)
-                n, last = int(np.ceil(u_in - 1e-3)), int(np.floor(u_out + 1e-3))
+                # u = 0 on the first voxel plane of the main axis
+                to_plane = -(geometry[0, axis] + px * geometry[1, axis] + py * geometry[2, axis]) / geometry[3, axis]
+                start_z = on_voxel(geometry[0, 0] + px * geometry[1, 0] + py * geometry[2, 0] + to_plane * step_z)
+                start_y = on_voxel(geometry[0, 1] + px * geometry[1, 1] + py * geometry[2, 1] + to_plane * step_y)
+                start_x = on_voxel(geometry[0, 2] + px * geometry[1, 2] + py * geometry[2, 2] + to_plane * step_x)
+                in_z, out_z = axis_limits(start_z, step_z, float(top_z))
+                in_y, out_y = axis_limits(start_y, step_y, rows - 1.0)
+                in_x, out_x = axis_limits(start_x, step_x, columns - 1.0)
+                u_in, u_out = max(in_z, in_y, in_x), min(out_z, out_y, out_x)
+                n, last = math.ceil(u_in - 1e-3), math.floor(u_out + 1e-3)
                 if n > last:
                     continue
-                bz, by, bx = f(start[0]), f(start[1]), f(start[2])
+                bz, by, bx = f(start_z), f(start_y), f(start_x)
                 best = f(-np.inf)
                 while n <= last:
-                    z = min(max(bz + f(n) * dz, f(0.0)), f(top[0]))
-                    y = min(max(by + f(n) * dy, f(0.0)), f(top[1]))
-                    x = min(max(bx + f(n) * dx, f(0.0)), f(top[2]))
+                    z = min(max(bz + f(n) * dz, f(0.0)), top_z)
+                    y = min(max(by + f(n) * dy, f(0.0)), f(rows - 1))
+                    x = min(max(bx + f(n) * dx, f(0.0)), f(columns - 1))
                     k, fz = cell_of(z, knots, finder, refine, even)
                     j, i = min(int(y), rows - 2), min(int(x), columns - 2)
                     block = np.uint64(((k >> 3) * block_rows + (j >> 3)) * block_columns + (i >> 3))
@@ -118,7 +127,7 @@ def _project_rows(
                         leave = slice_exit((k >> 3) * 8, ((k >> 3) + 1) * 8, knots, bz, iz)
                         leave = min(leave, stretch_exit((j >> 3) * 8, ((j >> 3) + 1) * 8, rows, by, iy))
                         leave = min(leave, stretch_exit((i >> 3) * 8, ((i >> 3) + 1) * 8, columns, bx, ix))
-                        n = max(n + 1, int(np.floor(min(leave, f(last + 1)))))
+                        n = max(n + 1, math.floor(min(leave, f(last + 1))))
                         continue
                     if has_hidden[block]:
                         v = careful_trilinear(

@@ -62,7 +62,7 @@ def cast_rays(
     empty_value = table.first if table.empty is None else table.empty
     empty = np.float32((empty_value - table.first) * per_value)
     integrals, plateau = running_integrals(table), _plateaus(table, shaded)
-    blocks = _block_codes(field, table, plateau, per_value, float(empty), shaded)
+    blocks, block_plateau = _block_codes(field, table, plateau, per_value, float(empty), shaded)
 
     along = field.mm_to_index @ camera.axes[2]
     step_mm = step / float(np.linalg.norm(along))
@@ -76,8 +76,8 @@ def cast_rays(
 
     def part(rows: slice) -> None:
         cast_rows(
-            field.stored, field.hidden, field.hidden_from, *field.shape, scale, offset, empty, field.knots, field.finder,
-            field.refine, field.even, blocks, integrals, plateau, geometry, np.float32(step_mm), normal, light,
+            field.stored, field.hidden, field.hidden_from, *field.shape, scale, offset, empty, field.knots,
+            field.finder, field.refine, field.even, blocks, block_plateau, integrals, plateau, geometry, np.float32(step_mm), normal, light,
             rows.start, rows.stop, out,
         )  # fmt: skip
 
@@ -96,8 +96,8 @@ def running_integrals(table: TransferTable) -> NDArray[np.float32]:
 
 def _block_codes(
     field: RayField, table: TransferTable, plateau: NDArray[np.int32], per_value: float, empty: float, shaded: bool
-) -> NDArray[np.uint8]:
-    """What each block is under this table, flat; see the constants in `casting`."""
+) -> tuple[NDArray[np.uint8], NDArray[np.int32]]:
+    """What each block is under this table (see the constants in `casting`), and its plateau, both flat."""
     entries = len(table.density_per_mm)
     low = np.clip((field.lowest - np.float32(table.first)) * np.float32(per_value), -1, entries)
     high = np.clip((field.highest - np.float32(table.first)) * np.float32(per_value), -1, entries)
@@ -108,14 +108,23 @@ def _block_codes(
     shown = np.concatenate(([0], np.cumsum(table.density_per_mm > 0)))
     clear = shown[last + 1] == shown[first]
     uniform = ~clear & (plateau[first] >= 0) & (plateau[first] == plateau[last]) & ~field.has_hidden
-    distance = ndimage.distance_transform_cdt(clear, metric="chessboard") if not clear.all() else clear * FARTHEST
-    codes = np.minimum(distance, FARTHEST).astype(np.uint8)
+    codes = np.minimum(_distance(clear), FARTHEST).astype(np.uint8)
     codes[~clear & field.has_hidden] = VISIBLE_WITH_HIDDEN
     if shaded:
         dense = np.concatenate(([0], np.cumsum(table.density_per_mm > table.surface_from_per_mm)))
         codes[~clear & ~field.has_hidden & (dense[last + 1] == dense[first])] = THIN
-    codes[uniform] = UNIFORM
-    return codes.reshape(-1)
+    for number in np.unique(plateau[first][uniform]):
+        alike = uniform & (plateau[first] == number)
+        codes[alike] = UNIFORM + np.minimum(_distance(alike), FARTHEST)[alike]
+    return codes.reshape(-1), plateau[first].reshape(-1)
+
+
+def _distance(inside: NDArray[np.bool_]) -> NDArray[np.int32]:
+    """Chessboard distance to the nearest block that is not inside, 0 there; FARTHEST where all are inside."""
+    if inside.all():
+        return np.full(inside.shape, FARTHEST, np.int32)
+    distance: NDArray[np.int32] = ndimage.distance_transform_cdt(inside, metric="chessboard")
+    return distance
 
 
 def _plateaus(table: TransferTable, shaded: bool) -> NDArray[np.int32]:

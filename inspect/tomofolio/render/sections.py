@@ -21,7 +21,7 @@ from tomofolio.volume import Kind, Unit
 
 #: The long side of a grey picture, without its margins, is within these limits (pixels).
 SMALLEST, LARGEST = 640, 1100
-MARGIN, FOOT = 44, 64
+MARGIN, FOOT = 48, 64
 
 
 @dataclass(frozen=True)
@@ -62,11 +62,11 @@ def section_views(
     for plane in PLANES:
         slug, name = plane.named(kind)
         camera = plane_camera(field, plane, centre, box_mm)
-        picture = apply_window(section(field, camera), *window)
+        values = section(field, camera)
         title = f"{name} section"
         caption = f"{title} at {_place(plane, centre, kind)}, {_seen_from(plane, kind)}. "
         caption += f"{window_text(window, unit)} {_scale_text(camera)}"
-        views.append(_grey_view(f"section-{slug}", "section", title, caption, picture, field, camera, window, kind))
+        views.append(_grey_view(f"section-{slug}", "section", title, caption, values, camera, window, kind))
     return tuple(views)
 
 
@@ -82,15 +82,25 @@ def projection_views(
     for plane in PLANES:
         slug, _ = plane.named(kind)
         camera = plane_camera(field, plane, centre, box_mm)
-        picture = apply_window(project_maximum(field, camera, empty), *window)
+        values = project_maximum(field, camera, empty)
+        seen = projection_window(values, window)
         axis = "XYZ"[plane.axis] if kind is Kind.COMPONENT else ("left–right", "front–back", "head–feet")[plane.axis]
         title = f"Maximum projection, {axis}"
-        caption = f"Largest value along every line of sight, {_seen_from(plane, kind)}; what was left out of the object "
-        caption += f"takes no part. {window_text(window, unit)} {_scale_text(camera)}"
-        views.append(
-            _grey_view(f"projection-{slug}", "projection", title, caption, picture, field, camera, window, kind)
+        caption = (
+            f"Largest value along every line of sight, {_seen_from(plane, kind)}; what was left out of the object "
         )
+        caption += f"takes no part. {window_text(seen, unit)} {_scale_text(camera)}"
+        views.append(_grey_view(f"projection-{slug}", "projection", title, caption, values, camera, seen, kind))
     return tuple(views)
+
+
+def projection_window(values: NDArray[np.float32], window: tuple[float, float]) -> tuple[float, float]:
+    """The window of the sections, opened upwards so that only the brightest 0.2 % of a projection are white."""
+    low, high = window[0] - 0.5 - (window[1] - 1) / 2, window[0] - 0.5 + (window[1] - 1) / 2
+    bright = values[values > low]  # false for NaN
+    if len(bright):
+        high = max(float(np.percentile(bright, 99.8)), low + 1.0)
+    return (low + high) / 2 + 0.5, high - low + 1.0
 
 
 def void_views(field: RayField, void: Spot, ranges: Ranges, unit: Unit, kind: Kind) -> tuple[View, ...]:
@@ -110,14 +120,11 @@ def void_views(field: RayField, void: Spot, ranges: Ranges, unit: Unit, kind: Ki
         title = f"Largest void, {name} section"
         caption = f"{name} section through void {void.id} at {_place(plane, centre, kind)}, {_seen_from(plane, kind)}. "
         if outlines:
-            caption += f"The line follows the value {_number(level)}{_symbol(unit)}, half-way between material and void. "
-        caption += f"{window_text(window, unit)} {_scale_text(camera)}"
-        picture = apply_window(values, *window)
-        views.append(
-            _grey_view(
-                f"void-{slug}", "section", title, caption, picture, field, camera, window, kind, outlines, values
+            caption += (
+                f"The line follows the value {_number(level)}{_symbol(unit)}, half-way between material and void. "
             )
-        )
+        caption += f"{window_text(window, unit)} {_scale_text(camera)}"
+        views.append(_grey_view(f"void-{slug}", "section", title, caption, values, camera, window, kind, outlines))
     return tuple(views)
 
 
@@ -174,17 +181,19 @@ def _grey_view(
     view_kind: str,
     title: str,
     caption: str,
-    picture: NDArray[np.uint8],
-    field: RayField,
+    values: NDArray[np.float32],
     camera: Camera,
     window: tuple[float, float],
     kind: Kind,
     strokes: tuple[Stroke, ...] = (),
-    values: NDArray[np.float32] | None = None,
 ) -> View:
-    """Set a grey picture on the ground with margins, where its letters and its scale bar stand clear of it."""
+    """Set a grey picture on the ground with margins, where its letters and its scale bar stand clear of it.
+
+    What lies outside the scan is ground too, so that nobody takes it for air.
+    """
     paper = round(sum(GROUND) / 3)
-    height, width = picture.shape
+    height, width = values.shape
+    picture = np.where(np.isfinite(values), apply_window(values, *window), paper).astype(np.uint8)
     pixels = np.full((height + 2 * MARGIN + FOOT, width + 2 * MARGIN), paper, np.uint8)
     pixels[MARGIN : MARGIN + height, MARGIN : MARGIN + width] = picture
     framed = camera.framed(MARGIN, FOOT)

@@ -15,7 +15,7 @@ from tomofolio.volume import Volume
 ENTRIES = 4096
 
 #: Optical depth of the most frequent range over the object's size, and how fast density grows as a range gets rarer.
-BULK_DEPTH, RARITY_POWER = 1.1, 2.0
+BULK_DEPTH, RARITY_POWER = 1.1, 2.6
 #: Opacity of one crossing of the outer surface, where there is one material and where there are more.
 SURFACE_ALONE, SURFACE_OUTER = 0.55, 0.20
 #: No matter gets denser than this optical depth per voxel: it is opaque within three voxels and stays smooth.
@@ -118,7 +118,9 @@ def _bulk_densities(matter: list[ValueRange], total: float, size_mm: float, voxe
     densities, share = {}, 0.0
     for item in reversed(matter):
         share += item.pure_share / total
-        densities[item.id] = min(BULK_DEPTH / (size_mm * max(share, 1e-3) ** RARITY_POWER), DENSEST_PER_VOXEL / voxel_mm)
+        densities[item.id] = min(
+            BULK_DEPTH / (size_mm * max(share, 1e-3) ** RARITY_POWER), DENSEST_PER_VOXEL / voxel_mm
+        )
     return densities
 
 

@@ -23,7 +23,7 @@ from tomofolio.volume import Kind, Volume
 Vector = tuple[float, float, float]
 
 #: Long side of a rendered picture in pixels, and the margins that keep letters and scale bar off the object.
-RENDER_SIZE, MARGIN, FOOT = 1000, 52, 72
+RENDER_SIZE, MARGIN, FOOT = 1000, 56, 72
 
 #: id, title, seen from, direction of sight, up
 PATIENT_DIRECTIONS: tuple[tuple[str, str, str, Vector, Vector], ...] = (
@@ -69,7 +69,8 @@ def standard_views(
     progress : told how much is done, 0 to 1.
     """
     field = make_field(volume, body)
-    box_mm = object_box_mm(volume, body)
+    corners = object_corners_mm(volume, body)
+    box_mm = np.stack((corners.min(axis=0), corners.max(axis=0)))
     void = findings.voids.items[0] if findings.voids is not None and findings.voids.items else None
     directions = COMPONENT_DIRECTIONS if kind is Kind.COMPONENT else PATIENT_DIRECTIONS
     sight = oblique_direction or OBLIQUE
@@ -84,19 +85,20 @@ def standard_views(
         if progress is not None:
             progress(done / total)
 
-    mm_per_pixel = _render_scale(box_mm, sight)
+    up = _upwards(sight)
+    seen = [d[3:] for d in directions] if "directions" in wanted else []
+    mm_per_pixel = _render_scale(corners, [*seen, (sight, up)] if "oblique" in wanted else seen)
     names = {item.id: item.name for item in ranges.items}
     for name in wanted:
         if name == "directions":
             for direction in directions:
-                views.append(_render(field, box_mm, tables, names, kind, mm_per_pixel, *direction))
+                views.append(_render(field, corners, tables, names, kind, mm_per_pixel, *direction))
                 step()
             continue
         if name == "oblique":
             where = direction_letters(-np.array(sight), kind)
-            up = (0.0, 0.0, 1.0) if abs(sight[2]) < 0.95 * np.linalg.norm(sight) else (0.0, -1.0, 0.0)
             view = ("oblique", "Oblique view", where, sight, up)
-            views.append(_render(field, box_mm, tables, names, kind, mm_per_pixel, *view))
+            views.append(_render(field, corners, tables, names, kind, mm_per_pixel, *view))
         elif name == "sections":
             views += section_views(field, box_mm, ranges, volume.unit, kind)
         elif name == "projections":
@@ -107,26 +109,31 @@ def standard_views(
     return tuple(views)
 
 
-def object_box_mm(volume: Volume, body: Body) -> NDArray[np.float64]:
-    """Shape (2, 3): smallest and largest LPS coordinates of the box of the object, half a voxel wider."""
+def object_corners_mm(volume: Volume, body: Body) -> NDArray[np.float64]:
+    """Shape (8, 3): corners of the index box of the object, half a voxel outside its outermost voxels, LPS."""
     ends = [(part.start - 0.5, part.stop - 0.5) for part in body.box]
-    corners = np.array([(k, j, i) for k in ends[0] for j in ends[1] for i in ends[2]])
-    positions = volume.grid.to_mm(corners)
-    return np.stack((positions.min(axis=0), positions.max(axis=0)))
+    return volume.grid.to_mm(np.array([(k, j, i) for k in ends[0] for j in ends[1] for i in ends[2]]))
 
 
-def _render_scale(box_mm: NDArray[np.float64], sight: Vector) -> float:
-    """One scale for all rendered views: the longest side of the box or its oblique silhouette fills the picture."""
-    extent = box_mm[1] - box_mm[0]
-    camera = Camera(sight, (0.0, 0.0, 1.0) if abs(sight[2]) < 0.95 * np.linalg.norm(sight) else (0.0, -1.0, 0.0),
-                    (0.0, 0.0, 0.0), 1.0, 2, 2)  # fmt: skip
-    longest = max(float(extent.max()), float((np.abs(camera.axes[:2]) @ extent).max()))
+def _upwards(sight: Vector) -> Vector:
+    """Upward direction for a free direction of sight: superior, or anterior where the sight is nearly along it."""
+    return (0.0, 0.0, 1.0) if abs(sight[2]) < 0.95 * float(np.linalg.norm(sight)) else (0.0, -1.0, 0.0)
+
+
+def _extent_mm(corners: NDArray[np.float64], sight: Vector, up: Vector) -> NDArray[np.float64]:
+    """Width and height that the corners take up in a picture, mm."""
+    return np.ptp(corners @ Camera(sight, up, (0.0, 0.0, 0.0), 1.0, 2, 2).axes[:2].T, axis=0)
+
+
+def _render_scale(corners: NDArray[np.float64], seen: list[tuple[Vector, Vector]]) -> float:
+    """One scale for all rendered views: the largest of them fills the picture."""
+    longest = max((float(_extent_mm(corners, sight, up).max()) for sight, up in seen), default=1.0)
     return longest / (RENDER_SIZE - 2 * MARGIN)
 
 
 def _render(
     field: RayField,
-    box_mm: NDArray[np.float64],
+    corners: NDArray[np.float64],
     table: TransferTable,
     names: dict[str, str],
     kind: Kind,
@@ -137,12 +144,9 @@ def _render(
     sight: Vector,
     up: Vector,
 ) -> View:
-    centre = box_mm.mean(axis=0)
+    centre = (corners.min(axis=0) + corners.max(axis=0)) / 2
     place = (float(centre[0]), float(centre[1]), float(centre[2]))
-    probe = Camera(sight, up, place, mm_per_pixel, 2, 2)
-    width, height = (
-        max(int(np.ceil(e / mm_per_pixel)), 240) for e in np.abs(probe.axes[:2]) @ (box_mm[1] - box_mm[0])
-    )
+    width, height = (max(int(np.ceil(e / mm_per_pixel)), 240) for e in _extent_mm(corners, sight, up))
     camera = Camera(sight, up, place, mm_per_pixel, width, height).framed(MARGIN, FOOT)
     pixels = on_ground(cast_rays(field, None, table, camera))
     caption = f"Seen from {seen_from}, parallel projection, {mm_per_pixel:.3g} mm per pixel at every depth. "

@@ -39,18 +39,17 @@ def window_from_ranges(ranges: Ranges) -> tuple[float, float]:
     items = ranges.items
     main, background = ranges.main, ranges.background
     matter = [item for item in items if not item.background] or list(items)
+    denser = max(item.peak + item.spread for item in matter)
     if background is None:
         low = matter[0].peak - 4 * matter[0].spread
-    elif matter[0].lower is not None:
-        low = background.peak + 0.15 * (matter[0].lower - background.peak)
     else:
-        low = background.peak
-    if len(matter) > 2:  # soft tissues lie close together: give them the greys, and let the far background be black
-        low = max(low, matter[0].lower if matter[0].lower is not None else low)
-    denser = [item for item in matter if item.peak > main.peak]
-    span = main.peak - low
-    high = main.peak + max(4 * main.spread, 0.25 * span)
-    if denser:
-        high = max(high, min(denser[-1].peak + denser[-1].spread, main.peak + 1.6 * span))
+        low = background.peak + 0.15 * (main.peak - background.peak)
+    if len(matter) > 2:  # materials that lie close together get the greys; what is far off may go black or white
+        span = denser - main.peak if denser > main.peak + 4 * main.spread else main.peak - low
+        low = max(low, min(main.peak - 0.4 * span, matter[0].peak - 2 * matter[0].spread))
+        high = main.peak + 0.6 * span
+    else:
+        high = max(main.peak + max(4 * main.spread, 0.25 * (main.peak - low)), denser)
+        high = min(high, main.peak + 1.6 * (main.peak - low))
     width = max(high - low, 1.0)
-    return (low + high) / 2 + 0.5, width + 1.0 if width > 1 else 2.0
+    return (low + high) / 2 + 0.5, width + 1.0
