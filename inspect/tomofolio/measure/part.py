@@ -1,20 +1,31 @@
-"""The part: volume of its material without closed voids, surface, and their uncertainty."""
+"""Volume and surface of the part: the material of the object with its inclusions, without its closed voids."""
 
 from __future__ import annotations
 
 import numpy as np
+from numpy.typing import NDArray
+from scipy.stats import norm
 
-from tomofolio.body.result import Body, Region
+from tomofolio.body.result import Body
+from tomofolio.fitness.artefacts import find_clipping
 from tomofolio.fitness.result import Fitness
-from tomofolio.measure.level import LevelField
 from tomofolio.measure.result import PartFigures
+from tomofolio.measure.rim import BAND_IN, BAND_OUT, DEEP, DEEPER, OUTER, RimSums, rim_sums
 from tomofolio.measure.surface import surface_area_mm2
 from tomofolio.ranges.result import Ranges
 from tomofolio.volume import Volume
 
-#: Relative standard uncertainty of the place of the half-way value that no voxel tells (scatter, beam hardening), as
-#: a share of the blur σ.
-PLACE_SIGMA = 0.05
+#: The rim's level is carried from the shells out to the band along a straight line, by at most this share of the
+#: contrast: more is no trend of one material.
+LARGEST_TREND = 0.05
+#: What a trend is expected to add before a look at the values (one standard deviation, share of the contrast), so that
+#: noise is not carried along.
+EXPECTED_TREND = 0.01
+#: Standard uncertainty of the rim's level: this share of what the trend adds, and this share of the contrast.
+TREND_UNSURE, LEVEL_UNSURE = 0.3, 0.002
+#: Standard uncertainty of where the sampled surface lies, in voxels, all over.
+PLACE_UNSURE_VOX = 0.006
+QUANTILE_95 = 1.96
 
 
 def part_figures(
@@ -22,47 +33,118 @@ def part_figures(
     ranges: Ranges,
     body: Body,
     fitness: Fitness,
-    field: LevelField | None,
-    outside_index: np.ndarray,
     *,
     closed_voids_mm3: float,
-    closed_voids_sd_mm3: float,
+    closed_voids_sd_mm3: float = 0.0,
 ) -> PartFigures:
-    """Volume of the object with all it encloses, less its closed voids.
+    """Volume of the filled object less the closed voids, and its outside surface.
 
-    The threshold counts voxels right where the blurred edge passes half-way between background and the material at
-    that place. Where the material is brighter or darker at the rim than its peak (cupping), the threshold sits beside
-    half-way, and the surface is off by Δ = σ · √(2π) · (threshold − half-way) / contrast for a Gaussian blur: the
-    mean of that over the surface, times the surface, is taken off.
+    The filled object (object and enclosed voxels past the threshold) is counted; in a band around its outside surface
+    the voxels count by the material they hold instead (`tomofolio.measure.rim`), so that neither the curvature of the
+    surface nor a threshold between levels that the rim does not have moves it. Where the blur or the background is
+    unknown the count stands as it is.
 
     Parameters
     ----------
-    field : local level of the main material; None leaves the correction out.
-    outside_index : shape (n, 3), indices of points on the outside surface.
+    closed_voids_mm3, closed_voids_sd_mm3 : best estimate of all closed voids and its standard uncertainty.
+
+    Returns
+    -------
+    The interval is None where there is no background to tell an edge by; so is the surface.
     """
-    grid = volume.grid
-    filled = np.zeros(grid.shape[0], np.int64)
-    for k in range(grid.shape[0]):
-        codes = body.regions[k]
-        filled[k] = np.count_nonzero((codes == Region.OBJECT) | (codes == Region.ENCLOSED))
-    gross = float(filled @ grid.voxel_volumes_mm3)
-    surface = surface_area_mm2(body, grid) if body.threshold is not None else None
-    if surface is None or body.threshold is None or ranges.background is None:
-        return PartFigures(volume_mm3=gross - closed_voids_mm3, volume_mm3_95=None, surface_mm2=surface)
-    blur = fitness.blur_sigma_mm or min(grid.spacing_mm)
-    background = ranges.background
-    contrast = ranges.main.peak - background.peak
-    shift, shift_sd = 0.0, 0.0
-    if field is not None and len(outside_index):
-        level = field.at(outside_index[:: max(len(outside_index) // 20000, 1)])
-        half_way = (level + background.peak) / 2
-        steps = blur * np.sqrt(2 * np.pi) * (body.threshold - half_way) / (level - background.peak)
-        shift = float(np.clip(np.mean(steps), -blur, blur))
-        shift_sd = abs(shift) / 3
-    bounds = background.upper_95
-    if bounds is not None:
-        shift_sd = float(np.hypot(shift_sd, (bounds[1] - bounds[0]) / 4 * blur * np.sqrt(2 * np.pi) / contrast))
-    shift_sd = float(np.hypot(shift_sd, PLACE_SIGMA * blur))
-    mm3 = gross + shift * surface - closed_voids_mm3
-    sd = float(np.hypot(shift_sd * surface, closed_voids_sd_mm3))
-    return PartFigures(volume_mm3=mm3, volume_mm3_95=(max(mm3 - 2 * sd, 0.0), mm3 + 2 * sd), surface_mm2=surface)
+    counted = _filled_mm3(volume, body)
+    if body.threshold is None or ranges.background is None or counted == 0:
+        return PartFigures(max(counted - closed_voids_mm3, 0.0), None, None)
+    surface = surface_area_mm2(body, volume.grid)
+    spacing = np.array(volume.grid.spacing_mm)
+    blur = _blur_vox(fitness, spacing)
+    correction, sd = _edge_correction(volume, ranges, body, fitness, blur, surface)
+    filled = counted + correction
+    half = QUANTILE_95 * float(np.hypot(sd, closed_voids_sd_mm3))
+    part = max(filled - closed_voids_mm3, 0.0)
+    return PartFigures(part, (max(part - half, 0.0), part + half), surface)
+
+
+def _filled_mm3(volume: Volume, body: Body) -> float:
+    """Volume of the object with what it encloses, by the threshold."""
+    # Codes 1 and 2 alone stay below 2 when 1 is taken off (0 turns into 255).
+    counts = [np.count_nonzero(body.regions[k] - np.uint8(1) < 2) for k in range(volume.shape[0])]
+    return float(np.dot(counts, volume.grid.voxel_volumes_mm3))
+
+
+def _blur_vox(fitness: Fitness, spacing: NDArray[np.float64]) -> NDArray[np.float64]:
+    if fitness.blur_sigma_axes_mm is not None:
+        return np.array(fitness.blur_sigma_axes_mm) / spacing
+    if fitness.blur_sigma_mm is not None:
+        return fitness.blur_sigma_mm / spacing
+    return np.ones(3)
+
+
+def _edge_correction(
+    volume: Volume,
+    ranges: Ranges,
+    body: Body,
+    fitness: Fitness,
+    blur_vox: NDArray[np.float64],
+    surface_mm2: float,
+) -> tuple[float, float]:
+    """What the band's material differs from its count by, and the standard uncertainty of the filled volume, in mm³."""
+    assert ranges.background is not None
+    rim = rim_sums(volume, body, blur_vox)
+    mean_spacing = float(volume.grid.voxel_volumes_mm3.mean() ** (1 / 3))
+    blur_mm = float(np.prod(blur_vox) ** (1 / 3)) * mean_spacing
+    outside = rim.mean(OUTER)
+    outside = ranges.background.peak if outside is None else outside
+    noise = fitness.noise if fitness.noise is not None else ranges.main.spread
+    together = 1.0
+    if fitness.noise_correlation_mm is not None:
+        filter_vox = np.array(fitness.noise_correlation_mm) / np.array(volume.grid.spacing_mm)
+        together = float(np.maximum(np.sqrt(4 * np.pi) * filter_vox, 1.0).prod())
+    level, level_sd = _rim_level(rim, ranges.main.peak, outside, noise * float(np.sqrt(together)))
+    contrast = level - outside
+    in_band, held = rim.table[BAND_IN], rim.table[BAND_IN] + rim.table[BAND_OUT]
+    correction = float((held[2] - held[1] * outside) / contrast - in_band[1])
+    correction += surface_mm2 * blur_mm * _cleared_foot(volume, ranges, body)
+    voxel = mean_spacing**3
+    from_noise = noise / contrast * voxel * np.sqrt(held[0] * together)
+    from_level = level_sd / contrast * in_band[1]
+    threshold_sd = 0.0
+    if ranges.background.upper_95 is not None:
+        threshold_sd = (ranges.background.upper_95[1] - ranges.background.upper_95[0]) / (2 * QUANTILE_95)
+    from_threshold = threshold_sd / abs(contrast) * np.sqrt(2 * np.pi) * blur_mm * surface_mm2
+    from_place = PLACE_UNSURE_VOX * mean_spacing * surface_mm2
+    parts = np.array([from_noise, from_level, from_threshold, from_place])
+    return correction, float(np.sqrt(np.square(parts).sum()))
+
+
+def _rim_level(rim: RimSums, fallback: float, outside: float, noise: float) -> tuple[float, float]:
+    """Level of the material in the band and its standard uncertainty, from the two shells within.
+
+    ``noise`` is that of independent voxels.
+    """
+    deep, deeper = rim.mean(DEEP), rim.mean(DEEPER)
+    if deep is None or (deep - outside) * (fallback - outside) <= 0:
+        return fallback, 0.02 * abs(fallback - outside)
+    contrast = abs(deep - outside)
+    deep_sd = noise / np.sqrt(rim.table[DEEP, 0])
+    if deeper is None:
+        return deep, float(np.hypot(deep_sd, EXPECTED_TREND * contrast))
+    # In half widths of the band the shells' middles lie 1 1/4 and 1 3/4 deep, the band's 1/2: so 3/2 of their step.
+    trend_sd = 1.5 * float(np.hypot(deep_sd, noise / np.sqrt(rim.table[DEEPER, 0])))
+    expected = EXPECTED_TREND * contrast
+    certain = expected**2 / (expected**2 + trend_sd**2)
+    trend = float(np.clip(1.5 * (deep - deeper), -LARGEST_TREND * contrast, LARGEST_TREND * contrast))
+    parts = (deep_sd, np.sqrt(certain) * trend_sd, TREND_UNSURE * trend, LEVEL_UNSURE * contrast)
+    return deep + certain * trend, float(np.sqrt(np.square(parts).sum()))
+
+
+def _cleared_foot(volume: Volume, ranges: Ranges, body: Body) -> float:
+    """What a background that was cleared takes from an edge, per area and in units of the blur.
+
+    ∫ Φ(t) dt up to the place where Φ reaches the share that was cleared.
+    """
+    cut = find_clipping(volume, ranges, body).cut
+    if cut <= 0:
+        return 0.0
+    place = norm.ppf(min(cut, 0.5))
+    return float(norm.pdf(place) + place * min(cut, 0.5))

@@ -165,7 +165,7 @@ class Stitched:
             links = coo_array((np.ones(len(ends[0]), np.int8), ends), shape=(len(node), len(node)))
             node = connected_components(links.tocsr(), directed=False)[1]
         number = int(node.max()) + 1 if len(node) else 0
-        mm3 = np.bincount(node, np.concatenate((self._open_mm3, new_mm3)), minlength=number)
+        mm3: Floats = np.bincount(node, np.concatenate((self._open_mm3, new_mm3)), minlength=number).astype(np.float64)
         last = _labels_of_slice(runs, slices - 1)
         alive, numbered = np.unique(node[before + last[last >= 0]], return_inverse=True)
         ended = np.ones(number, bool)
