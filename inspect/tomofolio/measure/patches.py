@@ -94,8 +94,8 @@ def patches(
 ) -> Iterator[Patch]:
     """Cut out every spot. ``contrast`` is material minus background.
 
-    A voxel of a dark spot is past half-way at half the contrast; a bright spot's own contrast is not known
-    beforehand, so there it is half of the brightest of the means of 27 voxels.
+    A voxel of a dark spot is past half-way at half the contrast. A core is what lies past half of the spot's own
+    strongest mean of 27 voxels, so that faint and bright spots, whose contrast is not known beforehand, have one too.
     """
     boxes = component_boxes(runs)
     finest = min(volume.grid.spacing_mm)
@@ -116,9 +116,7 @@ def patches(
         darkness = (sign * (level - values)).astype(np.float32)
         inside = (regions == Region.OBJECT) | (regions == Region.ENCLOSED)
         seeds = _seeds_in(runs, group, low, high)
-        half = 0.5 * contrast
-        if sign < 0:
-            half = 0.5 * float(ndimage.uniform_filter(darkness, 3)[seeds].max())
+        half = 0.5 * contrast if sign > 0 else np.inf
         yield from _share_out(low, darkness, level, inside, seeds, half, spacing, reach, clear)
 
 
@@ -147,8 +145,14 @@ def _share_out(
     reach: float,
     clear: float,
 ) -> Iterator[Patch]:
-    past_half = (darkness > half) & inside
-    pieces, count = ndimage.label(past_half)
+    seed_pieces, seed_count = ndimage.label(seeds)
+    peaks = ndimage.maximum(ndimage.uniform_filter(darkness, 3), seed_pieces, np.arange(seed_count + 1))
+    around = seed_pieces[
+        tuple(ndimage.distance_transform_edt(seed_pieces == 0, return_distances=False, return_indices=True))
+    ]
+    own_half = np.minimum(0.5 * np.asarray(peaks), half)[around]
+    pieces, count = ndimage.label((darkness > own_half) & inside)
+    past_half = (darkness > (half if np.isfinite(half) else own_half)) & inside
     touched = np.zeros(count + 1, bool)
     touched[np.unique(pieces[seeds])] = True
     sizes = np.bincount(pieces.ravel(), minlength=count + 1)
@@ -158,7 +162,6 @@ def _share_out(
     core_number[chosen] = np.arange(1, len(chosen) + 1)
     cores = core_number[pieces]
     # Seed components without a core of their own are faint or tiny spots: their seeds stand for the core.
-    seed_pieces, seed_count = ndimage.label(seeds)
     for number in range(1, seed_count + 1):
         here = seed_pieces == number
         if not cores[here].any():
