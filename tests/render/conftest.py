@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 from collections.abc import Callable
 
 import numpy as np
@@ -40,7 +41,7 @@ def plain_table(first, last, density, colour=(0.5, 0.5, 0.5), entries=4096) -> T
 def ranges_of(*peaks: tuple[float, float, float]) -> Ranges:
     """Ranges from (peak, spread, share); the first is the background, boundaries lie half-way."""
     items = []
-    bounds = [(a[0] + b[0]) / 2 for a, b in zip(peaks, peaks[1:], strict=False)]
+    bounds = [(a[0] + b[0]) / 2 for a, b in itertools.pairwise(peaks)]
     for n, (peak, spread, share) in enumerate(peaks):
         lower, upper = ([None, *bounds][n], [*bounds, None][n])
         items.append(ValueRange(f"R{n + 1}", f"R{n + 1}", "", lower, None, upper, None, peak, spread, share, n == 0))

@@ -134,7 +134,9 @@ def twin(volume, table, camera, step):
     return out
 
 
-@pytest.mark.parametrize("positions", [None, [0.0, 1.0, 1.6, 4.0, 5.0, 5.5, 8.0, 9.0, 10.5, 11.0]], ids=["even", "uneven"])
+@pytest.mark.parametrize(
+    "positions", [None, [0.0, 1.0, 1.6, 4.0, 5.0, 5.5, 8.0, 9.0, 10.5, 11.0]], ids=["even", "uneven"]
+)
 def test_kernel_agrees_with_a_plain_twin_on_a_tilted_grid(make, positions):
     rng = np.random.default_rng(7)
     tilt = np.radians(18.5)

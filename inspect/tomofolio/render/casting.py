@@ -51,7 +51,7 @@ def jitter_of(x: int, y: int) -> float:
 
 
 @helper
-def opacity(optical_depth: float) -> float:
+def opacity(optical_depth: float) -> Any:
     """1 − exp(−x); a series where the exponential would lose digits."""
     x = optical_depth
     if x < np.float32(0.05):
@@ -60,7 +60,7 @@ def opacity(optical_depth: float) -> float:
 
 
 @kernel
-def axis_limits(start: float, delta: float, top: float) -> tuple[float, float]:
+def axis_limits(start: float, delta: float, top: float) -> Any:
     """Where start + u · delta is inside 0 … top, as (first u, last u); first > last if nowhere."""
     if abs(delta) < 1e-9:
         if start < -1e-4 or start > top + 1e-4:
@@ -71,7 +71,7 @@ def axis_limits(start: float, delta: float, top: float) -> tuple[float, float]:
 
 
 @helper
-def stretch_exit(low: int, high: int, n: int, base: float, inverse: float) -> float:
+def stretch_exit(low: int, high: int, n: int, base: float, inverse: float) -> Any:
     """u at which a coordinate leaves the voxels low … high; the ends of the scan don't count."""
     if inverse > 0:
         return FAR if high >= n - 1 else (np.float32(high) - base) * inverse
@@ -79,7 +79,7 @@ def stretch_exit(low: int, high: int, n: int, base: float, inverse: float) -> fl
 
 
 @helper
-def slice_exit(low: int, high: int, knots: Array, base: float, inverse: float) -> float:
+def slice_exit(low: int, high: int, knots: Array, base: float, inverse: float) -> Any:
     """`stretch_exit` along the slice axis, whose slices need not be even."""
     if inverse > 0:
         return FAR if high >= knots.shape[0] - 1 else (knots[high] - base) * inverse
@@ -87,7 +87,7 @@ def slice_exit(low: int, high: int, knots: Array, base: float, inverse: float) -
 
 
 @helper
-def cell_of(z: float, knots: Array, finder: Array, refine: float, even: bool) -> tuple[int, float]:
+def cell_of(z: float, knots: Array, finder: Array, refine: float, even: bool) -> Any:
     """Slice below z and how far z is on the way to the next, 0 … 1."""
     if even:
         k = min(int(z), knots.shape[0] - 2)
@@ -98,7 +98,7 @@ def cell_of(z: float, knots: Array, finder: Array, refine: float, even: bool) ->
 
 
 @helper
-def between(integrals: Array, channel: int, v0: float, v1: float) -> float:
+def between(integrals: Array, channel: int, v0: float, v1: float) -> Any:
     """Integral of the table from v0 to v1, in table steps."""
     e0, e1 = min(int(v0), integrals.shape[0] - 2), min(int(v1), integrals.shape[0] - 2)
     q0, q1 = v0 - np.float32(e0), v1 - np.float32(e1)
@@ -108,15 +108,15 @@ def between(integrals: Array, channel: int, v0: float, v1: float) -> float:
 
 
 @helper
-def shape_light(gz: float, gy: float, gx: float, normal: Array, light: Array) -> tuple[float, float, float]:
+def shape_light(gz: float, gy: float, gx: float, normal: Array, light: Array) -> Any:
     """Light on matter with this gradient: (how surely it is a surface 0 … 1, diffuse |n·l|, gloss |n·h|^32)."""
     nx = normal[0, 0] * gz + normal[0, 1] * gy + normal[0, 2] * gx
     ny = normal[1, 0] * gz + normal[1, 1] * gy + normal[1, 2] * gx
     nz = normal[2, 0] * gz + normal[2, 1] * gy + normal[2, 2] * gx
     size = math.sqrt(nx * nx + ny * ny + nz * nz)
-    sure = min(max((size - light[9]) / (light[10] - light[9]), ZERO), ONE)
+    sure: Any = min(max((size - light[9]) / (light[10] - light[9]), ZERO), ONE)
     sure = sure * sure * (np.float32(3.0) - np.float32(2.0) * sure)
-    inverse = ONE / max(size, np.float32(1e-20))
+    inverse = ONE / (size + np.float32(1e-20))
     lit = abs(nx * light[0] + ny * light[1] + nz * light[2]) * inverse
     gloss = abs(nx * light[3] + ny * light[4] + nz * light[5]) * inverse
     gloss *= gloss
@@ -145,8 +145,8 @@ def settle(
     step_mm: float,
     fade_base: float,
     light: Array,
-) -> tuple[float, float, float, float]:
-    """Composite a length (in steps) of matter that is all like one table entry; (red, green, blue, through) after it."""
+) -> Any:
+    """Composite a length (in steps) of matter like one table entry; (red, green, blue, through) after it."""
     e, one = np.uint64(entry), np.uint64(1)
     thick = integrals[e + one, 0] - integrals[e, 0]
     a = opacity(thick * length * step_mm)
@@ -257,13 +257,13 @@ def cast_rows(
                         leave = min(leave, stretch_exit((bj - reach + 1) * 8, (bj + reach) * 8, rows, by, iy))
                         leave = min(leave, stretch_exit((bi - reach + 1) * 8, (bi + reach) * 8, columns, bx, ix))
                         landing = min(leave, end)
-                        stop = math.floor(landing)
+                        stop = int(landing + ONE) - 1  # rounded down; it is above −1 (math.floor is a call)
                         if leave < end:
                             landing = f(stop)
                         if VISIBLE < code <= FARTHEST and landing > u:
                             u, n, known, unlit = landing, stop + 1, False, ONE
                             continue
-                        uniform = UNIFORM < code <= UNIFORM + FARTHEST and landing > u
+                        uniform = bool(UNIFORM < code <= UNIFORM + FARTHEST and landing > u)
                         if not known and not uniform:
                             o = (k * rows + j) * columns + i
                             if needs_care(code, hidden_from):
@@ -283,7 +283,8 @@ def cast_rows(
                     if on >= 0:
                         if waiting > ZERO and on != waiting_on:
                             red, green, blue, through = settle(
-                                red, green, blue, through, waiting, middle, waiting_on, integrals, step_mm, fade_base, light
+                                red, green, blue, through, waiting, middle, waiting_on,
+                                integrals, step_mm, fade_base, light,
                             )  # fmt: skip
                             waiting = middle = ZERO
                         if uniform:
@@ -339,7 +340,8 @@ def cast_rows(
                     # 4. what waits comes before it
                     if waiting > ZERO:
                         red, green, blue, through = settle(
-                            red, green, blue, through, waiting, middle, waiting_on, integrals, step_mm, fade_base, light
+                            red, green, blue, through, waiting, middle, waiting_on,
+                                integrals, step_mm, fade_base, light,
                         )  # fmt: skip
                         waiting = middle = ZERO
                     # 5. one more value half-way: where the table bends, the value does not run straight
@@ -403,7 +405,8 @@ def cast_rows(
                         break
                 if waiting > ZERO:
                     red, green, blue, through = settle(
-                        red, green, blue, through, waiting, middle, waiting_on, integrals, step_mm, fade_base, light
+                        red, green, blue, through, waiting, middle, waiting_on,
+                                integrals, step_mm, fade_base, light,
                     )  # fmt: skip
                 out[py, px, 0] = red
                 out[py, px, 1] = green

@@ -18,7 +18,7 @@ from numba import get_num_threads
 from numpy.typing import NDArray
 
 from tomofolio.body.result import Body, Region
-from tomofolio.render.sampling import kernel, sample_points
+from tomofolio.render.sampling import helper, kernel, sample_points
 from tomofolio.volume import Volume
 
 Array = NDArray[Any]
@@ -59,12 +59,12 @@ class RayField:
 
     @cached_property
     def mm_to_index(self) -> NDArray[np.float64]:
-        return np.linalg.inv(self.index_to_mm)
+        return np.asarray(np.linalg.inv(self.index_to_mm), dtype=np.float64)
 
     @property
     def spacing_mm(self) -> NDArray[np.float64]:
         """Shape (3,): lengths of the steps of z, y and x."""
-        return np.linalg.norm(self.index_to_mm, axis=0)
+        return np.asarray(np.linalg.norm(self.index_to_mm, axis=0), dtype=np.float64)
 
     @property
     def size(self) -> NDArray[np.float64]:
@@ -73,13 +73,14 @@ class RayField:
 
     def index_of(self, position_mm: Array) -> NDArray[np.float64]:
         """Index positions (z, y, x) of LPS positions, shape (..., 3)."""
-        return (np.asarray(position_mm, dtype=np.float64) - self.origin_mm) @ self.mm_to_index.T
+        steps = np.asarray(position_mm, dtype=np.float64) - self.origin_mm
+        return np.asarray(steps @ self.mm_to_index.T, dtype=np.float64)
 
     def values_at(self, position_mm: Array) -> NDArray[np.float32]:
         """Trilinear values at LPS positions of shape (..., 3); NaN outside the box of voxel centres."""
         points = np.ascontiguousarray(self.index_of(position_mm).reshape(-1, 3), dtype=np.float32)
-        nearest = np.rint(points)
-        points = np.where(np.abs(points - nearest) < 1e-3, nearest, points)  # rounding must not drop border voxels
+        inside = np.clip(points, 0, self.size.astype(np.float32))
+        points = np.where(np.abs(points - inside) < 1e-3, inside, points)  # rounding must not drop border voxels
         out = np.empty(len(points), np.float32)
         scale, offset = self.slope.astype(np.float32), self.intercept.astype(np.float32)
         geometry = (self.knots, self.finder, self.refine)
@@ -132,10 +133,13 @@ def make_field(volume: Volume, body: Body | None = None) -> RayField:
     scale, offset = slope.astype(np.float32), intercept.astype(np.float32)
 
     def part(layers: slice) -> None:
+        ends = np.empty((2, columns), flat.dtype)
         for bk in range(layers.start, layers.stop):
+            around = hidden[max(bk * BLOCK - 1, 0) : bk * BLOCK + BLOCK + 2]
+            masked = hidden_from if hidden.ndim == 3 and bool((around >= hidden_from).any()) else NOTHING_HIDDEN
             _block_limits(
-                flat, flat_hidden, hidden_from, slices, rows, columns, scale, offset,
-                bk, lowest[bk], highest[bk], has_hidden[bk],
+                flat, flat_hidden, masked, slices, rows, columns, scale, offset,
+                bk, ends, lowest[bk], highest[bk], has_hidden[bk],
             )  # fmt: skip
 
     over_parts(part, blocks[0], 4)
@@ -193,46 +197,59 @@ def _block_limits(
     scale: Array,
     offset: Array,
     bk: int,
+    ends: Array,
     lowest: Array,
     highest: Array,
     has_hidden: Array,
 ) -> None:
-    """Fill one layer of blocks; a block with nothing to show gets (inf, −inf)."""
+    """Fill one layer of blocks; a block with nothing to show gets (inf, −inf). ``ends`` is room for two rows."""
     lowest[:] = np.inf
     highest[:] = -np.inf
     k0, k1 = bk * 8, min(bk * 8 + 9, slices)
     for bj in range(lowest.shape[0]):
         j0, j1 = bj * 8, min(bj * 8 + 9, rows)
-        for bi in range(lowest.shape[1]):
-            i0, i1 = bi * 8, min(bi * 8 + 9, columns)
-            masked = False
-            if hidden_from < 255:
+        masked = False
+        if hidden_from < 255:
+            for bi in range(lowest.shape[1]):
+                here = False
                 for k in range(max(k0 - 1, 0), min(k1 + 1, slices)):
                     for j in range(max(j0 - 1, 0), min(j1 + 1, rows)):
                         o = (k * rows + j) * columns
-                        for i in range(max(i0 - 1, 0), min(i1 + 1, columns)):
-                            masked |= hidden[o + i] >= hidden_from
-            has_hidden[bj, bi] = masked
-            low, high = np.float32(np.inf), np.float32(-np.inf)
-            for k in range(k0, k1):
-                first = stored[(k * rows + j0) * columns + i0]
-                small, large, seen = first, first, not masked
-                for j in range(j0, j1):
-                    o = (k * rows + j) * columns
-                    if masked:
-                        for i in range(i0, i1):
+                        for i in range(max(bi * 8 - 1, 0), min(bi * 8 + 10, columns)):
+                            here |= hidden[o + i] >= hidden_from
+                has_hidden[bj, bi] = here
+                masked |= here
+        for k in range(k0, k1):
+            first = (k * rows + j0) * columns
+            for i in range(columns):  # whole rows first: this runs on vector units
+                ends[0, i] = stored[first + i]
+                ends[1, i] = stored[first + i]
+            for j in range(j0 + 1, j1):
+                o = (k * rows + j) * columns
+                for i in range(columns):
+                    ends[0, i] = min(ends[0, i], stored[o + i])
+                    ends[1, i] = max(ends[1, i], stored[o + i])
+            for bi in range(lowest.shape[1]):
+                if masked and has_hidden[bj, bi]:
+                    continue
+                small, large = ends[0, bi * 8], ends[1, bi * 8]
+                for i in range(bi * 8, min(bi * 8 + 9, columns)):
+                    small, large = min(small, ends[0, i]), max(large, ends[1, i])
+                _widen(lowest, highest, bj, bi, scale[k] * np.float32(small) + offset[k])
+                _widen(lowest, highest, bj, bi, scale[k] * np.float32(large) + offset[k])
+        if masked:
+            for bi in range(lowest.shape[1]):
+                if not has_hidden[bj, bi]:
+                    continue
+                for k in range(k0, k1):
+                    for j in range(j0, j1):
+                        o = (k * rows + j) * columns
+                        for i in range(bi * 8, min(bi * 8 + 9, columns)):
                             if hidden[o + i] < hidden_from:
-                                v = stored[o + i]
-                                small = min(small, v) if seen else v
-                                large = max(large, v) if seen else v
-                                seen = True
-                    else:
-                        for i in range(i0, i1):
-                            small = min(small, stored[o + i])
-                            large = max(large, stored[o + i])
-                if seen:
-                    a = scale[k] * np.float32(small) + offset[k]
-                    b = scale[k] * np.float32(large) + offset[k]
-                    low, high = min(low, a, b), max(high, a, b)
-            lowest[bj, bi] = low
-            highest[bj, bi] = high
+                                _widen(lowest, highest, bj, bi, scale[k] * np.float32(stored[o + i]) + offset[k])
+
+
+@helper
+def _widen(lowest: Array, highest: Array, j: int, i: int, value: float) -> None:
+    lowest[j, i] = min(lowest[j, i], value)
+    highest[j, i] = max(highest[j, i], value)

@@ -22,7 +22,7 @@ def direction_letters(direction: ArrayLike, kind: Kind) -> str:
     """
     vector = np.asarray(direction, dtype=np.float64)
     vector = vector / np.linalg.norm(vector)
-    order = sorted(range(3), key=lambda axis: (-round(abs(vector[axis]), 6), axis))
+    order = sorted(range(3), key=lambda axis: (-round(abs(float(vector[axis])), 6), axis))
     named = [order[0]] + [axis for axis in order[1:2] if abs(vector[axis]) >= SECOND_LETTER_FROM]
     if kind is Kind.COMPONENT:
         return " ".join(("+" if vector[axis] > 0 else "−") + "XYZ"[axis] for axis in named)

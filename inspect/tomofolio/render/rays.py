@@ -77,8 +77,8 @@ def cast_rays(
     def part(rows: slice) -> None:
         cast_rows(
             field.stored, field.hidden, field.hidden_from, *field.shape, scale, offset, empty, field.knots,
-            field.finder, field.refine, field.even, blocks, block_plateau, integrals, plateau, geometry, np.float32(step_mm), normal, light,
-            rows.start, rows.stop, out,
+            field.finder, field.refine, field.even, blocks, block_plateau, integrals, plateau, geometry,
+            np.float32(step_mm), normal, light, rows.start, rows.stop, out,
         )  # fmt: skip
 
     over_parts(part, camera.height, TILE)

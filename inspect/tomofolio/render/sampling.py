@@ -45,7 +45,7 @@ def trilinear(
     fx: float,
     scale: Array,
     offset: Array,
-) -> float:
+) -> Any:
     """Trilinear value in the cell whose first corner is the flat index ``o`` in slice ``k``."""
     f, u = np.float32, np.uint64  # an unsigned index spares numba's check for negative ones, a third of the time
     one, a_, r, s = u(1), u(o), u(row), u(k)
@@ -78,7 +78,7 @@ def careful_voxel(
     scale: Array,
     offset: Array,
     empty: float,
-) -> float:
+) -> Any:
     """Value of one voxel; ``empty`` outside the scan and where ``hidden`` holds a code from ``hidden_from`` on."""
     if k < 0 or j < 0 or i < 0 or k >= slices or j >= rows or i >= columns:
         return empty
@@ -105,7 +105,7 @@ def careful_trilinear(
     scale: Array,
     offset: Array,
     empty: float,
-) -> float:
+) -> Any:
     """`trilinear` at the cell (k, j, i), with ``empty`` in place of voxels that are hidden or outside the scan."""
     total = np.float32(0.0)
     for corner in range(8):
@@ -120,7 +120,7 @@ def careful_trilinear(
 
 
 @helper
-def _flat_value(stored: Array, q: int, row: int, fy: float, fx: float) -> float:
+def _flat_value(stored: Array, q: int, row: int, fy: float, fx: float) -> Any:
     """Bilinear stored number in one slice; ``q`` and ``row`` are unsigned."""
     one = np.uint64(1)
     a0, a1 = np.float32(stored[q]), np.float32(stored[q + one])
@@ -130,7 +130,7 @@ def _flat_value(stored: Array, q: int, row: int, fy: float, fx: float) -> float:
 
 
 @helper
-def _flat_gradient(stored: Array, q: int, row: int, fy: float, fx: float) -> tuple[float, float, float]:
+def _flat_gradient(stored: Array, q: int, row: int, fy: float, fx: float) -> Any:
     """(stored number, its change per row, per column) in one slice, from the 12 pixels around a cell."""
     f, one, two, half, whole = np.float32, np.uint64(1), np.uint64(2), np.float32(0.5), np.float32(1.0)
     u0, u1 = f(stored[q - row]), f(stored[q - row + one])
@@ -160,7 +160,7 @@ def gradient(
     scale: Array,
     offset: Array,
     knots: Array,
-) -> tuple[float, float, float]:
+) -> Any:
     """Central differences at the eight corners of a cell, interpolated: smooth where the gradient of `trilinear` jumps.
 
     The four slices k − 1 … k + 2, rows and columns around the cell must exist.
@@ -203,7 +203,7 @@ def careful_gradient(
     offset: Array,
     knots: Array,
     empty: float,
-) -> tuple[float, float, float]:
+) -> Any:
     """`gradient` with ``empty`` in place of voxels that are hidden or outside the scan."""
     gz = gy = gx = np.float32(0.0)
     for side in (-1, 1):

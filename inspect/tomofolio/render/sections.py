@@ -141,7 +141,7 @@ def void_outlines(values: NDArray[np.float32], camera: Camera, void: Spot, level
 
     Only the hollow nearest to the void's position is outlined, so that neighbours and the outside stay unmarked.
     """
-    hollow = np.nan_to_num(values, nan=np.inf) < level
+    hollow = np.nan_to_num(values, nan=np.inf) <= level
     parts = measure.label(hollow, connectivity=1)
     if not parts.any():
         return ()

@@ -138,7 +138,7 @@ def _sizes(body: Body | None, volume: Volume | None) -> tuple[float, float]:
 def _crossing(low: ValueRange, high: ValueRange) -> tuple[float, float]:
     """The values that belong to neither bulk: around the boundary, clear of the noise of both peaks."""
     boundary = high.lower if high.lower is not None else (low.peak + high.peak) / 2
-    start = max(low.peak + 4.5 * low.spread, boundary - 0.7 * (boundary - low.peak))
+    start = max(low.peak + 4.5 * low.spread, boundary - 0.5 * (boundary - low.peak))
     stop = min(high.peak - 4.5 * high.spread, boundary + 0.7 * (high.peak - boundary))
     narrow = 0.05 * (high.peak - low.peak)
     return min(start, boundary - narrow), max(stop, boundary + narrow)

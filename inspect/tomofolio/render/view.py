@@ -26,7 +26,10 @@ class Stroke:
 
 @dataclass(frozen=True)
 class Caption:
-    """A short text at a point. ``align`` is where the text lies relative to the point: left/centre/right + top/middle/bottom."""
+    """A short text at a point.
+
+    ``align`` says which part of the text is at the point: left/centre/right, a hyphen, top/middle/bottom.
+    """
 
     at: Point
     text: str

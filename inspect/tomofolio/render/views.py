@@ -25,6 +25,9 @@ Vector = tuple[float, float, float]
 #: Long side of a rendered picture in pixels, and the margins that keep letters and scale bar off the object.
 RENDER_SIZE, MARGIN, FOOT = 1000, 56, 72
 
+#: Step of the rays in voxels: with the table integrated between samples a finer one changes no pixel visibly.
+STEP = 0.75
+
 #: id, title, seen from, direction of sight, up
 PATIENT_DIRECTIONS: tuple[tuple[str, str, str, Vector, Vector], ...] = (
     ("anterior", "Anterior view", "the front", (0.0, 1.0, 0.0), (0.0, 0.0, 1.0)),
@@ -148,7 +151,7 @@ def _render(
     place = (float(centre[0]), float(centre[1]), float(centre[2]))
     width, height = (max(int(np.ceil(e / mm_per_pixel)), 240) for e in _extent_mm(corners, sight, up))
     camera = Camera(sight, up, place, mm_per_pixel, width, height).framed(MARGIN, FOOT)
-    pixels = on_ground(cast_rays(field, None, table, camera))
+    pixels = on_ground(cast_rays(field, None, table, camera, step=STEP))
     caption = f"Seen from {seen_from}, parallel projection, {mm_per_pixel:.3g} mm per pixel at every depth. "
     caption += "The object's middle is at x {}, y {}, z {} mm.".format(*(f"{c:.1f}".replace("-", "−") for c in place))
     marks = orientation_letters(camera, kind, MARGIN, FOOT) + scale_bar(camera, MARGIN, FOOT)
