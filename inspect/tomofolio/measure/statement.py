@@ -43,10 +43,10 @@ def boundaries_statement(volume: Volume, ranges: Ranges, body: Body, fitness: Fi
         "the levels beside the surface, so that blur does not move the surface.",
         f"A void is darker than the material around it by more than noise can be: the mean of 3 × 3 × 3 voxels lies "
         f"more than {level} below the local level, which is the larger of {FALSE_CALL_DEVIATIONS:g} standard "
-        f"deviations of such means and {100 * SMALLEST_SHARE:g} % of the contrast of {_number(contrast, ranges)}{unit}. It lies "
-        "inside the object, and it is closed where it does not reach the outside.",
+        f"deviations of such means and {100 * SMALLEST_SHARE:g} % of the contrast, {_number(contrast, ranges)}{unit}. "
+        "It lies inside the object, and it is closed where it does not reach the outside.",
         "The best estimate of a void's volume is its missing grey value over the contrast; beside it stands the count "
-        "of voxels past half-way between the local material and the void.",
+        "of voxels past half-way between the local material and the background.",
         f"An inclusion is brighter than the material around it by the same {level}; its volume is the surplus of grey "
         "value over its own contrast.",
         "Spots nearer to the outside than its blurred edge reaches, 2 σ and one voxel, are not looked for: "
