@@ -5,7 +5,7 @@ from __future__ import annotations
 from typing import Any
 
 import numpy as np
-from numba import njit
+from numba import njit, prange
 from numpy.typing import NDArray
 
 from tomofolio.body.result import Body
@@ -22,9 +22,12 @@ def outside_points(volume: Volume, body: Body) -> NDArray[np.float64]:
     if body.threshold is None:
         return np.empty((0, 3))
     box = np.array([(part.start, part.stop) for part in body.box])
-    arguments = (volume.stored, volume.slope, volume.intercept, body.regions, box, float(body.threshold))
-    points = np.empty((_count(body.regions, box), 3), np.float32)
-    _fill(*arguments, points)
+    counts = np.zeros(volume.shape[0], np.int64)
+    _count(body.regions, box, counts)
+    first = np.concatenate(([0], np.cumsum(counts)))
+    points = np.empty((first[-1], 3), np.float32)
+    voxels = (volume.stored, volume.slope, volume.intercept, body.regions)
+    _fill(*voxels, box, float(body.threshold), first, points)
     return points.astype(np.float64)
 
 
@@ -33,11 +36,11 @@ def _is_out(code: int) -> bool:
     return code != 1 and code != 2
 
 
-@njit(cache=True)
-def _count(regions: Array, box: Array) -> int:
+@njit(cache=True, parallel=True)
+def _count(regions: Array, box: Array, counts: Array) -> None:
     slices, rows, columns = regions.shape
-    n = 0
-    for k in range(box[0, 0], box[0, 1]):
+    for k in prange(box[0, 0], box[0, 1]):
+        n = 0
         for j in range(box[1, 0], box[1, 1]):
             for i in range(box[2, 0], box[2, 1]):
                 if regions[k, j, i] == 1:
@@ -47,31 +50,53 @@ def _count(regions: Array, box: Array) -> int:
                     n += j + 1 < rows and _is_out(regions[k, j + 1, i])
                     n += i > 0 and _is_out(regions[k, j, i - 1])
                     n += i + 1 < columns and _is_out(regions[k, j, i + 1])
-    return n
+        counts[k] = n
+
+
+@njit(cache=True, parallel=True)
+def _fill(
+    stored: Array,
+    slope: Array,
+    intercept: Array,
+    regions: Array,
+    box: Array,
+    threshold: float,
+    first: Array,
+    points: Array,
+) -> None:
+    for k in prange(box[0, 0], box[0, 1]):
+        if first[k] < first[k + 1]:
+            _fill_slice(stored, slope, intercept, regions, box, threshold, k, first[k], points)
 
 
 @njit(cache=True)
-def _fill(
-    stored: Array, slope: Array, intercept: Array, regions: Array, box: Array, threshold: float, points: Array
+def _fill_slice(
+    stored: Array,
+    slope: Array,
+    intercept: Array,
+    regions: Array,
+    box: Array,
+    threshold: float,
+    k: int,
+    n: int,
+    points: Array,
 ) -> None:
     slices, rows, columns = regions.shape
     steps = ((-1, 0, 0), (1, 0, 0), (0, -1, 0), (0, 1, 0), (0, 0, -1), (0, 0, 1))
-    n = 0
-    for k in range(box[0, 0], box[0, 1]):
-        for j in range(box[1, 0], box[1, 1]):
-            for i in range(box[2, 0], box[2, 1]):
-                if regions[k, j, i] != 1:
+    for j in range(box[1, 0], box[1, 1]):
+        for i in range(box[2, 0], box[2, 1]):
+            if regions[k, j, i] != 1:
+                continue
+            here = slope[k] * stored[k, j, i] + intercept[k]
+            for dk, dj, di in steps:
+                a, b, c = k + dk, j + dj, i + di
+                if not (0 <= a < slices and 0 <= b < rows and 0 <= c < columns) or not _is_out(regions[a, b, c]):
                     continue
-                here = slope[k] * stored[k, j, i] + intercept[k]
-                for dk, dj, di in steps:
-                    a, b, c = k + dk, j + dj, i + di
-                    if not (0 <= a < slices and 0 <= b < rows and 0 <= c < columns) or not _is_out(regions[a, b, c]):
-                        continue
-                    there = slope[a] * stored[a, b, c] + intercept[a]
-                    part = 0.5
-                    if here != there:
-                        part = min(max((here - threshold) / (here - there), 0.0), 1.0)
-                    points[n, 0] = k + part * dk
-                    points[n, 1] = j + part * dj
-                    points[n, 2] = i + part * di
-                    n += 1
+                there = slope[a] * stored[a, b, c] + intercept[a]
+                part = 0.5
+                if here != there:
+                    part = min(max((here - threshold) / (here - there), 0.0), 1.0)
+                points[n, 0] = k + part * dk
+                points[n, 1] = j + part * dj
+                points[n, 2] = i + part * di
+                n += 1
