@@ -68,7 +68,7 @@ def findings_of(*spots: Spot) -> Findings:
     return Findings((), None, Spots(len(spots), 0.0, None, None, None, None, spots), None)
 
 
-@pytest.fixture
+@pytest.fixture(scope="session")
 def make():
     """The makers above under one name."""
 
@@ -84,7 +84,7 @@ def make():
     return Makers
 
 
-@pytest.fixture
+@pytest.fixture(scope="session")
 def marker_phantom():
     """A block with a ball only at the patient's left, anterior, superior corner; spacing 1.0, 0.9, 0.8 mm.
 

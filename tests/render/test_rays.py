@@ -11,8 +11,8 @@ from scipy import ndimage
 
 from tomofolio.body.result import Body, Region
 from tomofolio.render import Camera, cast_rays, make_field, make_tables
-from tomofolio.render.casting import jitter_of, opacity
 from tomofolio.render.colours import on_ground
+from tomofolio.render.stepping import jitter_of, opacity
 from tomofolio.volume import Grid, Volume
 
 LEVEL = 1 / 255
@@ -208,6 +208,24 @@ def test_excluded_and_no_data_voxels_are_clear(make):
     assert shown[:, :11].max() == 0 and shown[:, 21:].max() == 0
     masked = Volume(volume.stored, 1.0, 0.0, volume.grid, volume.unit, regions != Region.OBJECT)
     assert np.array_equal(cast_rays(masked, None, table, along_y(32, 32), shaded=False)[..., 3], shown)
+
+
+def test_blurred_edge_of_something_excluded_leaves_no_ghost(make):
+    """A plate beside the block is excluded; its soft edge is OUTSIDE by its value, and must not be seen."""
+    volume = make.volume(
+        make.grid((32, 48, 32)),
+        lambda p: (
+            1000 / (1 + np.exp((np.abs(p[..., 0] - 10) - 5) * 2))
+            + 1000 / (1 + np.exp((np.abs(p[..., 0] - 24) - 2) * 1.2))
+        ),
+    )
+    regions = np.where(volume.stored > 500, Region.OBJECT, Region.OUTSIDE).astype(np.uint8)
+    regions[(regions == Region.OBJECT) & (np.arange(32) > 18)] = Region.EXCLUDED
+    body = Body(regions, (slice(0, 32), slice(0, 48), slice(5, 16)), 500.0)
+    table = make.table(0, 1100, lambda v: np.where(v > 100, 0.2, 0.0))
+    shown = cast_rays(volume, body, table, along_y(32, 32), shaded=False)[..., 3]
+    assert shown[:, 20:].max() == 0
+    assert shown[:, 7:14].min() > 0.9
 
 
 def test_nothing_is_seen_outside_the_scan(make):

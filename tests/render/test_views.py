@@ -15,19 +15,21 @@ from tomofolio.volume import Kind
 ALL = ("directions", "oblique", "sections", "projections")
 
 
-@pytest.fixture
+@pytest.fixture(scope="module")
 def views_of(marker_phantom, make):
     volume, ranges, body = marker_phantom
+    table = make_tables(ranges, body=body, volume=volume)
 
     def render(kind=Kind.PATIENT, wanted=ALL, **options):
-        table = make_tables(ranges, body=body, volume=volume)
-        findings = options.pop("findings", make.findings())
-        return {
-            view.id: view
-            for view in standard_views(volume, ranges, body, findings, table, kind=kind, wanted=wanted, **options)
-        }
+        views = standard_views(volume, ranges, body, make.findings(), table, kind=kind, wanted=wanted, **options)
+        return {view.id: view for view in views}
 
     return render
+
+
+@pytest.fixture(scope="module")
+def patient_views(views_of):
+    return views_of()
 
 
 def letters(view):
@@ -49,17 +51,17 @@ def ball_centre(view):
         return x.mean() / inner.shape[1], y.mean() / inner.shape[0]
     warm = pixels[..., 0] - pixels[..., 2]
     y, x = np.nonzero(warm > 0.6 * warm.max())
-    return x.mean() / pixels.shape[1], y.mean() / (pixels.shape[0] - 72)
+    return x.mean() / pixels.shape[1], y.mean() / (pixels.shape[0] - 68)
 
 
-def test_patients_left_is_on_the_right_in_axial_and_anterior_pictures(views_of):
+def test_patients_left_is_on_the_right_in_axial_and_anterior_pictures(patient_views):
     """The ball lies at x > 0 (LPS: the patient's Left), y < 0 (Anterior), z > 0 (Superior).
 
     Axial, seen from the feet: the viewer looks along +z with anterior up, so to the viewer's right is
     sight × up = (0,0,1) × (0,−1,0) = (1,0,0) = Left. Anterior, looking along +y with superior up: (0,1,0) × (0,0,1) =
     (1,0,0) = Left. Left view, looking along −x: (−1,0,0) × (0,0,1) = (0,1,0), so posterior is on the right.
     """
-    views = views_of()
+    views = patient_views
     for name, wanted in {
         "projection-axial": (1, -1), "projection-coronal": (1, -1), "projection-sagittal": (-1, -1),
         "render-anterior": (1, -1), "render-posterior": (-1, -1), "render-left": (-1, -1), "render-right": (1, -1),
@@ -117,9 +119,9 @@ def test_scale_bar_is_as_long_in_the_picture_as_it_says():
     assert np.ptp(camera.to_pixel(ends), axis=0)[0] == pytest.approx(length, abs=1e-6)
 
 
-def test_scale_bar_agrees_with_the_grid_in_a_section(views_of):
+def test_scale_bar_agrees_with_the_grid_in_a_section(patient_views):
     """The block is 48 mm wide: measured in pixels between its edges, it must be 48 mm by the scale bar."""
-    view = views_of(wanted=("sections",))["section-axial"]
+    view = patient_views["section-axial"]
     bar = next(mark for mark in view.marks if isinstance(mark, Stroke) and mark.role == "scale")
     text = next(mark for mark in view.marks if isinstance(mark, Caption) and mark.role == "scale")
     mm = float(text.text.split()[0]) / (bar.points[2][0] - bar.points[1][0])
@@ -199,8 +201,8 @@ def test_no_void_views_without_voids(views_of):
     assert views_of(wanted=("largest-void",)) == {}
 
 
-def test_renders_share_one_scale_and_marks_stay_off_the_middle(views_of):
-    views = [view for view in views_of().values() if view.kind == "render"]
+def test_renders_share_one_scale_and_marks_stay_off_the_middle(patient_views):
+    views = [view for view in patient_views.values() if view.kind == "render"]
     assert len(views) == 7 and len({view.mm_per_pixel for view in views}) == 1
     assert max(max(view.pixels.shape[:2]) for view in views) <= 1100
     for view in views:

@@ -9,9 +9,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from tomofolio.render.camera import Camera
-from tomofolio.render.casting import TILE, axis_limits, cell_of, slice_exit, stretch_exit
 from tomofolio.render.field import RayField, over_parts
 from tomofolio.render.sampling import careful_trilinear, helper, kernel, trilinear
+from tomofolio.render.stepping import TILE, axis_limits, cell_of, slice_exit, stretch_exit
 
 Array = NDArray[Any]
 

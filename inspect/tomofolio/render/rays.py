@@ -15,9 +15,10 @@ from scipy import ndimage
 
 from tomofolio.body.result import Body
 from tomofolio.render.camera import Camera
-from tomofolio.render.casting import FARTHEST, THIN, TILE, UNIFORM, VISIBLE_WITH_HIDDEN, cast_rows
+from tomofolio.render.casting import cast_rows
 from tomofolio.render.colours import linear_ground
 from tomofolio.render.field import RayField, make_field, over_parts
+from tomofolio.render.stepping import FARTHEST, THIN, TILE, UNIFORM, VISIBLE_WITH_HIDDEN
 from tomofolio.render.tables import TransferTable
 from tomofolio.volume import Volume
 
@@ -97,7 +98,7 @@ def running_integrals(table: TransferTable) -> NDArray[np.float32]:
 def _block_codes(
     field: RayField, table: TransferTable, plateau: NDArray[np.int32], per_value: float, empty: float, shaded: bool
 ) -> tuple[NDArray[np.uint8], NDArray[np.int32]]:
-    """What each block is under this table (see the constants in `casting`), and its plateau, both flat."""
+    """What each block is under this table (see the constants in `stepping`), and its plateau, both flat."""
     entries = len(table.density_per_mm)
     low = np.clip((field.lowest - np.float32(table.first)) * np.float32(per_value), -1, entries)
     high = np.clip((field.highest - np.float32(table.first)) * np.float32(per_value), -1, entries)

@@ -14,8 +14,12 @@ import numpy as np
 from numba import njit
 from numpy.typing import NDArray
 
+from tomofolio.body.result import Region
+
 Array = NDArray[Any]
 FAST = {"contract", "nsz", "arcp"}
+
+OUTSIDE, OBJECT, EXCLUDED = int(Region.OUTSIDE), int(Region.OBJECT), int(Region.EXCLUDED)
 
 # Kernels here allocate nothing, so numba's reference counts are left out of them (``_nrt``): they are atomic, sit in
 # the innermost loop around every helper that takes an array, and took two thirds of the time.
@@ -79,12 +83,26 @@ def careful_voxel(
     offset: Array,
     empty: float,
 ) -> Any:
-    """Value of one voxel; ``empty`` outside the scan and where ``hidden`` holds a code from ``hidden_from`` on."""
+    """Value of one voxel; ``empty`` outside the scan and where ``hidden`` holds a code from ``hidden_from`` on.
+
+    Where the codes are those of `Region`, background that touches no object is empty as well: near hidden things it
+    holds their blurred edges, which would hang in the air as a ghost.
+    """
     if k < 0 or j < 0 or i < 0 or k >= slices or j >= rows or i >= columns:
         return empty
     o = (k * rows + j) * columns + i
     if hidden_from < 255 and hidden[o] >= hidden_from:
         return empty
+    if hidden_from == EXCLUDED and hidden[o] == OUTSIDE:
+        touching = (k > 0 and hidden[o - rows * columns] == OBJECT) or (
+            k < slices - 1 and hidden[o + rows * columns] == OBJECT
+        )
+        touching = touching or (j > 0 and hidden[o - columns] == OBJECT)
+        touching = touching or (j < rows - 1 and hidden[o + columns] == OBJECT)
+        touching = touching or (i > 0 and hidden[o - 1] == OBJECT)
+        touching = touching or (i < columns - 1 and hidden[o + 1] == OBJECT)
+        if not touching:
+            return empty
     return scale[k] * np.float32(stored[o]) + offset[k]
 
 

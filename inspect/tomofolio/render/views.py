@@ -23,7 +23,7 @@ from tomofolio.volume import Kind, Volume
 Vector = tuple[float, float, float]
 
 #: Long side of a rendered picture in pixels, and the margins that keep letters and scale bar off the object.
-RENDER_SIZE, MARGIN, FOOT = 1000, 56, 72
+RENDER_SIZE, MARGIN, FOOT = 920, 52, 68
 
 #: Step of the rays in voxels: with the table integrated between samples a finer one changes no pixel visibly.
 STEP = 0.75
