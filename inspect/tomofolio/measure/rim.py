@@ -83,34 +83,27 @@ def _lower(row: Array, by: Array, cost: np.int16) -> None:
 
 
 @njit(cache=True)
-def _along(distance: Array, reach: float, margin: int, axis: int) -> Array:
-    """Least squared distance, one axis added: the minimum over all offsets of what was there and the offset squared."""
-    result = distance.copy()
-    n = distance.shape[axis]
-    for offset in range(-margin, margin + 1):
-        cost = np.int16(round(UNIT * (offset / reach) ** 2))
-        first, last = max(0, -offset), min(n, n - offset)
-        if axis == 0:
-            for k in range(first, last):
-                for j in range(distance.shape[1]):
-                    _lower(result[k, j], distance[k + offset, j], cost)
-        elif axis == 1:
-            for k in range(distance.shape[0]):
-                for j in range(first, last):
-                    _lower(result[k, j], distance[k, j + offset], cost)
-        else:
-            for k in range(distance.shape[0]):
-                for j in range(distance.shape[1]):
-                    _lower(result[k, j, first:last], distance[k, j, first + offset : last + offset], cost)
-    return result
+def _distances(distance: Array, reach: Array, margin: Array) -> Array:
+    """Squared distance to the nearest flagged (0) voxel in units of the reach, exact as far as the margin.
 
-
-@njit(cache=True)
-def _distances(flagged: Array, reach: Array, margin: Array) -> Array:
-    """Squared distance to the nearest flagged (0) voxel in units of the reach, exact as far as the margin."""
+    Axis by axis the minimum over all offsets of what was there and the offset squared. The last ``margin[2]`` voxels
+    of every row must be `FAR`: they keep the rows apart when a whole plane is moved along its rows.
+    """
+    planes, rows, columns = distance.shape
     for axis in range(3):
-        flagged = _along(flagged, reach[axis], margin[axis], axis)
-    return flagged
+        result = distance.copy()
+        for offset in range(-margin[axis], margin[axis] + 1):
+            cost = np.int16(round(UNIT * (offset / reach[axis]) ** 2))
+            if axis == 0:
+                for k in range(max(0, -offset), min(planes, planes - offset)):
+                    _lower(result[k].ravel(), distance[k + offset].ravel(), cost)
+                continue
+            shift = offset if axis == 2 else offset * columns
+            first, last = max(0, -shift), min(rows * columns, rows * columns - shift)
+            for k in range(planes):
+                _lower(result[k].ravel()[first:last], distance[k].ravel()[first + shift : last + shift], cost)
+        distance = result
+    return distance
 
 
 @njit(cache=True)
@@ -153,7 +146,7 @@ def _sum_tiles(
         a0, b0, c0 = max(a - margin[0], 0), max(b - margin[1], 0), max(c - margin[2], 0)
         a1, b1, c1 = min(a + TILE, high[0]), min(b + TILE, high[1]), min(c + TILE, high[2])
         near = regions[a0 : a1 + margin[0], b0 : b1 + margin[1], c0 : c1 + margin[2]]
-        outside = np.full(near.shape, np.int16(FAR))
+        outside = np.full((near.shape[0], near.shape[1], near.shape[2] + margin[2]), np.int16(FAR))
         filled, other = outside.copy(), outside.copy()
         is_there = np.zeros(3, np.bool_)
         for k in range(near.shape[0]):
