@@ -18,8 +18,8 @@ BOTTOM, TOP = 3.0, 9.5
 SOLIDS: tuple[Solid, ...] = (
     box((3.5, 3.5, BOTTOM), (31.5, 31.5, TOP), corner=4.0),
     cylinder((11.0, 11.0), 3.6, BOTTOM, 17.0),
-    cylinder((24.5, 11.0), 4.5, BOTTOM, 15.5),
-    cylinder((24.5, 24.5), 3.6, BOTTOM, 17.0),
+    cylinder((24.5, 12.6), 4.5, BOTTOM, 15.5),
+    cylinder((23.6, 23.6), 3.6, BOTTOM, 17.0),
     box((8.0, 16.6, BOTTOM), (27.0, 18.4, 13.0)),
     box((11.0, 10.0, BOTTOM), (24.5, 11.8, 12.5)),
 )
@@ -29,9 +29,9 @@ RIM_OUTER, RIM_INNER = (
 )
 #: Through the plate and its boss, and two screw holes from above that end in the bosses.
 HOLES: tuple[Solid, ...] = (
-    cylinder((24.5, 11.0), 2.2, 0.0, 20.0),
+    cylinder((24.5, 12.6), 2.2, 0.0, 20.0),
     cylinder((11.0, 11.0), 1.2, 13.0, 20.0),
-    cylinder((24.5, 24.5), 1.2, 13.0, 20.0),
+    cylinder((23.6, 23.6), 1.2, 13.0, 20.0),
 )
 
 #: name -> (spheres or ellipsoids that make it up: centre, half axes in mm), closed voids.

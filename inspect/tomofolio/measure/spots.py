@@ -25,6 +25,8 @@ Array = NDArray[np.float64]
 
 #: An estimate must be this many of its standard deviations above nothing to be reported.
 SMALLEST_SIGNIFICANCE = 2.5
+#: A spot whose core (past half of its own peak) is so many times larger than its volume is no spot.
+DIFFUSE_RATIO = 2.5
 #: A dark region this faint that lies at the outside is another material, not a void.
 FAINT_CONTRAST = 0.75
 #: Below this many blur σ a spot's surface and the outside cannot be told apart.
@@ -145,8 +147,10 @@ def _brightness(patch: Patch, ranges: Ranges) -> float:
 def _is_spot(patch: Patch, found: Estimate, noise: Noise, sign: int) -> bool:
     if found.relative_sd > 1 / SMALLEST_SIGNIFICANCE or found.own_contrast <= 0:
         return False
-    if not found.fitted and not patch.past_half.any():
-        return False  # a wide faint region: structure of the material, too faint for a void of its size
+    if patch.core.sum() > DIFFUSE_RATIO * found.voxels:
+        return False  # wide and faint: a crevice of the outside or structure of the material, no spot of its own
+    if not found.fitted and found.contrast is None and patch.past_half.sum() < 0.1 * found.voxels:
+        return False
     at_outside = float(patch.edge_vox[patch.core].min()) < 1.5 + found.spread_vox
     if sign < 0:
         return not at_outside
