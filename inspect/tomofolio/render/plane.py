@@ -129,14 +129,13 @@ def _project_rows(
                         leave = min(leave, stretch_exit((i >> 3) * 8, ((i >> 3) + 1) * 8, columns, bx, ix))
                         n = max(n + 1, math.floor(min(leave, f(last + 1))))
                         continue
-                    if has_hidden[block]:
+                    o = (k * rows + j) * columns + i
+                    v = trilinear(stored, o, columns, layer, k, fz, y - f(j), x - f(i), scale, offset)
+                    if v > best and has_hidden[block]:  # hidden voxels can only lower it, so most need no closer look
                         v = careful_trilinear(
                             stored, hidden, hidden_from, slices, rows, columns,
                             k, j, i, fz, y - f(j), x - f(i), scale, offset, empty,
                         )  # fmt: skip
-                    else:
-                        o = (k * rows + j) * columns + i
-                        v = trilinear(stored, o, columns, layer, k, fz, y - f(j), x - f(i), scale, offset)
                     best = max(best, v)
                     n += 1
                 out[py, px] = best if best > f(-np.inf) else empty

@@ -14,10 +14,14 @@ from tomofolio.volume import Volume
 
 ENTRIES = 4096
 
-#: Optical depth of the most frequent range over the object's size, and how fast density grows as a range gets rarer.
-BULK_DEPTH, RARITY_POWER = 1.1, 2.6
-#: Opacity of one crossing of the outer surface, where there is one material and where there are more.
-SURFACE_ALONE, SURFACE_OUTER = 0.55, 0.20
+#: How fast density grows as a range gets rarer.
+RARITY_POWER = 2.6
+#: Optical depth of the most frequent range over the object's size, and opacity of one crossing of the outer surface:
+#: where there is one material, which should read as a solid, and where it encloses others that should be seen.
+DEPTH_ALONE, SURFACE_ALONE = 1.1, 0.36
+DEPTH_ENCLOSING, SURFACE_ENCLOSING = 0.6, 0.20
+#: From this share of the object on, a material begins to count as alone (a few small inclusions hide nothing).
+ALONE_FROM = 0.96
 #: No matter gets denser than this optical depth per voxel: it is opaque within three voxels and stays smooth.
 DENSEST_PER_VOXEL = 1.2
 #: A sharp edge takes about so many voxels from one material to the other.
@@ -55,8 +59,8 @@ def make_tables(ranges: Ranges, *, body: Body | None = None, volume: Volume | No
     """A table from the ranges: background clear, frequent values faint, sparse values strong, surfaces visible.
 
     The bulk of every range is a plateau, so that noise does not flicker and rays may cross it in one step. Its
-    density is inverse to the square of its share of the object and to the object's size; the crossing from
-    background to material gets a density of its own, set so that one crossing has a given opacity.
+    density falls with its share of the object and with the object's size; the crossing from background to material
+    gets a density of its own, set so that one crossing has a given opacity (Levoy 1988: show the boundaries).
 
     Parameters
     ----------
@@ -73,7 +77,11 @@ def make_tables(ranges: Ranges, *, body: Body | None = None, volume: Volume | No
     matter = [item for item in ranges.items if not item.background]
     total = sum(item.pure_share for item in matter) or 1.0
     colours = ordered_colours(len(matter))
-    bulk = _bulk_densities(matter, total, size_mm, voxel_mm)
+    largest = max((item.pure_share / total for item in matter), default=1.0)
+    alone = min(max((largest - ALONE_FROM) / (1 - ALONE_FROM), 0.0), 1.0)
+    bulk_depth = DEPTH_ENCLOSING + alone * (DEPTH_ALONE - DEPTH_ENCLOSING)
+    surface_opacity = SURFACE_ENCLOSING + alone * (SURFACE_ALONE - SURFACE_ENCLOSING)
+    bulk = _bulk_densities(matter, total, bulk_depth / size_mm, DENSEST_PER_VOXEL / voxel_mm)
     linear = {item.id: decode_srgb(np.array(c) / 255) for item, c in zip(matter, colours, strict=True)}
     density = np.zeros(ENTRIES)
     colour = np.zeros((ENTRIES, 3))
@@ -87,14 +95,13 @@ def make_tables(ranges: Ranges, *, body: Body | None = None, volume: Volume | No
             low, high = _crossing(previous, item)
             rise = _smoothstep((values - low) / (high - low))
             before = bulk.get(previous.id, 0.0)
-            both_matter = not previous.background and not item.background
             density += rise * (level - before)
-            if both_matter:
+            if not previous.background and not item.background:
                 colour += rise[:, None] * (shade - linear[previous.id])
             else:
-                surface = item if previous.background else previous
-                colour[values >= low] = linear[surface.id] if previous.background else colour[values >= low]
-                wanted = -np.log1p(-(SURFACE_ALONE if len(matter) == 1 else SURFACE_OUTER))
+                if previous.background:
+                    colour[values >= low] = shade
+                wanted = float(-np.log1p(-surface_opacity))
                 density += _bump(values, low, high) * _peak_density(wanted, previous, item, low, high, voxel_mm)
         previous = item
     return TransferTable(
@@ -109,7 +116,7 @@ def make_tables(ranges: Ranges, *, body: Body | None = None, volume: Volume | No
     )
 
 
-def _bulk_densities(matter: list[ValueRange], total: float, size_mm: float, voxel_mm: float) -> dict[str, float]:
+def _bulk_densities(matter: list[ValueRange], total: float, frequent: float, densest: float) -> dict[str, float]:
     """Density of every range: the rarer it is together with all that is denser, the stronger.
 
     Counting the denser ranges in keeps density rising with the value, so a thin outer range, however rare, never hides
@@ -118,9 +125,7 @@ def _bulk_densities(matter: list[ValueRange], total: float, size_mm: float, voxe
     densities, share = {}, 0.0
     for item in reversed(matter):
         share += item.pure_share / total
-        densities[item.id] = min(
-            BULK_DEPTH / (size_mm * max(share, 1e-3) ** RARITY_POWER), DENSEST_PER_VOXEL / voxel_mm
-        )
+        densities[item.id] = min(frequent / max(share, 1e-3) ** RARITY_POWER, densest)
     return densities
 
 
