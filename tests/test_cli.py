@@ -139,7 +139,8 @@ def test_unusable_input_ends_with_3_and_one_message(block_series, block_pixels, 
     one_message(run("report", series_writer(tmp_path / "nowhere", few, ImagePositionPatient=None), *out), 3)
     one_message(run("report", series_writer(tmp_path / "unscaled", few, PixelSpacing=None), *out), 3)
     one_message(run("report", series_writer(tmp_path / "mr", few, Modality="MR"), *out), 3)
-    one_message(run("report", block_series, "--series", "9.9.9", *out), 3)
+    choose = run("report", block_series, "--series", "9.9.9", *out)
+    assert choose.returncode == 3 and choose.stderr.startswith("tomofolio: ") and "--series" in choose.stderr
     assert files(tmp_path / "out") == []
 
 

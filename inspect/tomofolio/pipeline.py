@@ -2,20 +2,18 @@
 
 from __future__ import annotations
 
-import os
 import platform
 from collections.abc import Mapping
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass, replace
-from datetime import UTC, datetime
 from importlib.metadata import PackageNotFoundError, version
 from pathlib import Path
 
 from tomofolio import __version__
 from tomofolio.body import find_body
 from tomofolio.case import Case, Provenance
+from tomofolio.clock import run_time
 from tomofolio.deliver import measurements_text, ranges_csv, voids_csv, written_whole
-from tomofolio.errors import CallError
 from tomofolio.fingerprint import pixels_sha256
 from tomofolio.fitness import assess
 from tomofolio.intake import read_series
@@ -34,10 +32,10 @@ LIBRARIES = (
     "scipy",
     "numba",
     "scikit-image",
-    "connected-components-3d",
     "pydicom",
     "pylibjpeg-openjpeg",
     "pyjpegls",
+    "python-gdcm",
     "reportlab",
     "pillow",
 )
@@ -141,22 +139,6 @@ def default_report_name(case: Case) -> str:
     words = "".join(c if c.isalnum() else "-" for c in case.series.description.lower()) if case.keep_identity else ""
     name = "-".join(part for part in words.split("-") if part)[:40]
     return f"tomofolio-{name + '-' if name else ''}{case.provenance.pixels_sha256[:12]}.pdf"
-
-
-def run_time() -> str:
-    """Date of the run, ISO 8601 in UTC: ``SOURCE_DATE_EPOCH`` where it is set, else now.
-
-    Raises
-    ------
-    CallError : ``SOURCE_DATE_EPOCH`` is not a whole number of seconds.
-    """
-    epoch = os.environ.get("SOURCE_DATE_EPOCH")
-    if not epoch:
-        return datetime.now(UTC).replace(microsecond=0).isoformat()
-    try:
-        return datetime.fromtimestamp(int(epoch), UTC).isoformat()
-    except (ValueError, OverflowError, OSError) as error:
-        raise CallError(f"SOURCE_DATE_EPOCH = {epoch!r} is not a number of seconds") from error
 
 
 def library_versions() -> dict[str, str]:

@@ -62,8 +62,8 @@ def _series(case: Case) -> dict[str, Any]:
 
 def _fitness(case: Case) -> dict[str, Any]:
     fitness = case.fitness
-    keys = ("noise", "contrast", "cnr", "blur_sigma_mm", "mtf10_per_mm")
-    keys += ("detectable_diameter_mm", "measurable_diameter_mm")
+    keys = ["noise", "contrast", "cnr", "blur_sigma_mm", "mtf10_per_mm"]
+    keys += ["detectable_diameter_mm", "measurable_diameter_mm"]
     table: dict[str, Any] = {key: getattr(fitness, key) for key in keys}
     every = (case.series, case.ranges, case.body, fitness, case.findings)
     table["findings"] = [
