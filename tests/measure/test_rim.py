@@ -5,7 +5,7 @@ import pytest
 from scipy import ndimage
 
 from tomofolio.body.result import Body
-from tomofolio.measure.rim import BAND_IN, BAND_OUT, BAND_SIGMAS, DEEP, DEEPER, OUTER, rim_sums
+from tomofolio.measure.rim import ASIDE, BAND_IN, BAND_OUT, BAND_SIGMAS, DEEP, DEEPER, OUTER, rim_sums
 
 
 @pytest.mark.parametrize("seed", range(4))
@@ -19,18 +19,25 @@ def test_agrees_with_the_exact_distance_transform(phantoms, seed):
     regions[10:13, 20:23, 30:33] = 2 * filled[10:13, 20:23, 30:33]  # a void
     regions[:, :4] = 3
     filled = (regions == 1) | (regions == 2)
-    volume = phantoms.volume_of(rng.normal(500, 200, shape), grid)
+    values = rng.normal(500, 200, shape)
+    values[20:24, 30:34, 40:46] += 600  # something denser
+    volume = phantoms.volume_of(values, grid)
     ends = [np.flatnonzero(filled.any(axis=tuple(a for a in range(3) if a != axis))) for axis in range(3)]
     box = tuple(slice(int(e[0]), int(e[-1]) + 1) for e in ends)
-    table = rim_sums(volume, Body(regions, box, 500.0), blur).table
+    table = rim_sums(volume, Body(regions, box, 500.0), blur, 950.0).table
 
     def away(flags):
         """Distance to the nearest flagged voxel in half widths of the band."""
         return ndimage.distance_transform_edt(~flags, sampling=1 / (BAND_SIGMAS * blur + 0.5))
 
     plus = ndimage.generate_binary_structure(3, 1).astype(int)
-    void = (regions == 2) & (ndimage.convolve((regions == 2).astype(int), plus, mode="constant") >= 4)
-    alone = away((regions == 3) | void) > 1
+
+    def clustered(flags):
+        """Flagged voxels of which three of the six neighbours are flagged too."""
+        return flags & (ndimage.convolve(flags.astype(int), plus, mode="constant") >= 4)
+
+    apart = (regions == 3) | clustered(regions == 2) | (clustered(volume.stored >= 950) & (regions == 1))
+    alone = away(apart) > 1
     inwards, outwards = away(regions == 0), away(filled)
     rows = {
         BAND_IN: filled & alone & (inwards <= 1),
@@ -38,6 +45,7 @@ def test_agrees_with_the_exact_distance_transform(phantoms, seed):
         DEEP: filled & alone & (inwards > 1) & (inwards <= 1.5),
         DEEPER: filled & alone & (inwards > 1.5) & (inwards <= 2),
         OUTER: (regions == 0) & alone & (outwards > 1) & (outwards <= 1.5),
+        ASIDE: ~alone & ((filled & (inwards <= 1)) | ((regions == 0) & (outwards <= 1))),
     }
     weight = np.broadcast_to(grid.voxel_volumes_mm3[:, None, None], shape)
     for row, members in rows.items():

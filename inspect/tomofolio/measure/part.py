@@ -10,7 +10,7 @@ from tomofolio.body.result import Body
 from tomofolio.fitness.artefacts import find_clipping
 from tomofolio.fitness.result import Fitness
 from tomofolio.measure.result import PartFigures
-from tomofolio.measure.rim import BAND_IN, BAND_OUT, DEEP, DEEPER, OUTER, RimSums, rim_sums
+from tomofolio.measure.rim import ASIDE, BAND_IN, BAND_OUT, DEEP, DEEPER, OUTER, rim_sums
 from tomofolio.measure.surface import surface_area_mm2
 from tomofolio.ranges.result import Ranges
 from tomofolio.volume import Volume
@@ -25,6 +25,12 @@ EXPECTED_TREND = 0.01
 TREND_UNSURE, LEVEL_UNSURE = 0.3, 0.002
 #: Standard uncertainty of where the sampled surface lies, in voxels, all over.
 PLACE_UNSURE_VOX = 0.006
+#: … of the surface where the count stands, in σ of the blur: at a material twice as dense half-way lies 0.67 σ off.
+ASIDE_UNSURE = 0.67
+#: … and of the correction itself, for edges that are not as the model of one even blur has them, as a share of it.
+CORRECTION_UNSURE = 0.2
+#: A tile's own level weighs as much as the mean of all from this number of voxels on.
+FEW_VOXELS = 500.0
 QUANTILE_95 = 1.96
 
 
@@ -90,47 +96,70 @@ def _edge_correction(
 ) -> tuple[float, float]:
     """What the band's material differs from its count by, and the standard uncertainty of the filled volume, in mm³."""
     assert ranges.background is not None
-    rim = rim_sums(volume, body, blur_vox)
+    rim = rim_sums(volume, body, blur_vox, ranges.main.upper)
+    table = rim.table
     mean_spacing = float(volume.grid.voxel_volumes_mm3.mean() ** (1 / 3))
     blur_mm = float(np.prod(blur_vox) ** (1 / 3)) * mean_spacing
-    outside = rim.mean(OUTER)
-    outside = ranges.background.peak if outside is None else outside
+    outside = _mean(table[OUTER], ranges.background.peak)
     noise = fitness.noise if fitness.noise is not None else ranges.main.spread
     together = 1.0
     if fitness.noise_correlation_mm is not None:
         filter_vox = np.array(fitness.noise_correlation_mm) / np.array(volume.grid.spacing_mm)
         together = float(np.maximum(np.sqrt(4 * np.pi) * filter_vox, 1.0).prod())
-    level, level_sd = _rim_level(rim, ranges.main.peak, outside, noise * float(np.sqrt(together)))
+    level, level_sd = _rim_level(table, ranges.main.peak, outside, noise * float(np.sqrt(together)))
     contrast = level - outside
-    in_band, held = rim.table[BAND_IN], rim.table[BAND_IN] + rim.table[BAND_OUT]
+    in_band, held = table[BAND_IN], table[BAND_IN] + table[BAND_OUT]
     correction = float((held[2] - held[1] * outside) / contrast - in_band[1])
-    correction += surface_mm2 * blur_mm * _cleared_foot(volume, ranges, body)
-    voxel = mean_spacing**3
-    from_noise = noise / contrast * voxel * np.sqrt(held[0] * together)
+    aside = float(table[ASIDE, 1] / max(held[1] + table[ASIDE, 1], 1e-300))
+    correction += (1 - aside) * surface_mm2 * blur_mm * _cleared_foot(volume, ranges, body)
+    from_noise = noise / contrast * mean_spacing**3 * np.sqrt(held[0] * together)
     from_level = level_sd / contrast * in_band[1]
+    from_unlike = _unlike_places(rim.tiles, outside, contrast)
     threshold_sd = 0.0
     if ranges.background.upper_95 is not None:
         threshold_sd = (ranges.background.upper_95[1] - ranges.background.upper_95[0]) / (2 * QUANTILE_95)
     from_threshold = threshold_sd / abs(contrast) * np.sqrt(2 * np.pi) * blur_mm * surface_mm2
     from_place = PLACE_UNSURE_VOX * mean_spacing * surface_mm2
-    parts = np.array([from_noise, from_level, from_threshold, from_place])
+    from_aside = ASIDE_UNSURE * blur_mm * aside * surface_mm2
+    from_model = CORRECTION_UNSURE * correction
+    parts = np.array([from_noise, from_level, from_unlike, from_threshold, from_place, from_aside, from_model])
     return correction, float(np.sqrt(np.square(parts).sum()))
 
 
-def _rim_level(rim: RimSums, fallback: float, outside: float, noise: float) -> tuple[float, float]:
+def _mean(sums: NDArray[np.float64], otherwise: float) -> float:
+    return float(sums[2] / sums[1]) if sums[1] > 0 else otherwise
+
+
+def _unlike_places(tiles: NDArray[np.float64], outside: float, contrast: float) -> float:
+    """How much the correction would differ if every tile were held against its own level, in mm³.
+
+    Next to nothing in one material; more where levels vary and thin walls, which have no shells, are none of the mean.
+    """
+    mean = _mean(tiles[:, DEEP].sum(axis=0), outside + contrast)
+    count = tiles[:, DEEP, 0]
+    local = tiles[:, DEEP, 2] / np.maximum(tiles[:, DEEP, 1], 1e-300)
+    # A tile's own level counts by its number of voxels; the mean stands in where there are few.
+    step = count / (count + FEW_VOXELS) * (local - mean)
+    material = tiles[:, BAND_IN] + tiles[:, BAND_OUT]
+    held = material[:, 2] - material[:, 1] * outside
+    return abs(float((held / (contrast + np.where(count > 0, step, 0.0))).sum() - held.sum() / contrast))
+
+
+def _rim_level(table: NDArray[np.float64], fallback: float, outside: float, noise: float) -> tuple[float, float]:
     """Level of the material in the band and its standard uncertainty, from the two shells within.
 
     ``noise`` is that of independent voxels.
     """
-    deep, deeper = rim.mean(DEEP), rim.mean(DEEPER)
-    if deep is None or (deep - outside) * (fallback - outside) <= 0:
+    deep = _mean(table[DEEP], outside)
+    if (deep - outside) * (fallback - outside) <= 0:
         return fallback, 0.02 * abs(fallback - outside)
     contrast = abs(deep - outside)
-    deep_sd = noise / np.sqrt(rim.table[DEEP, 0])
-    if deeper is None:
+    deep_sd = noise / np.sqrt(table[DEEP, 0])
+    if table[DEEPER, 0] == 0:
         return deep, float(np.hypot(deep_sd, EXPECTED_TREND * contrast))
+    deeper = _mean(table[DEEPER], deep)
     # In half widths of the band the shells' middles lie 1 1/4 and 1 3/4 deep, the band's 1/2: so 3/2 of their step.
-    trend_sd = 1.5 * float(np.hypot(deep_sd, noise / np.sqrt(rim.table[DEEPER, 0])))
+    trend_sd = 1.5 * float(np.hypot(deep_sd, noise / np.sqrt(table[DEEPER, 0])))
     expected = EXPECTED_TREND * contrast
     certain = expected**2 / (expected**2 + trend_sd**2)
     trend = float(np.clip(1.5 * (deep - deeper), -LARGEST_TREND * contrast, LARGEST_TREND * contrast))

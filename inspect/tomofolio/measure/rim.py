@@ -4,12 +4,14 @@ Blur moves grey value about but loses none of it. So the band's grey value above
 rim, is the volume of material in the band, whatever the blur, the curvature and the corners (counting voxels past
 half-way loses about σ² · mean curvature per area). Beside the band lie the shells that say what the rim's levels are:
 two deeper and deeper inside, one outside. Everything is linear in the values, so one mean level serves a surface whose
-level varies: the mean over the shell is the mean over the surface.
+level varies: the mean over the shell is the mean over the surface. Where a denser material lies at the surface (a
+sleeve, a coating) no one level serves; there the threshold's count is kept.
 """
 
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 from typing import Any
 
 import numpy as np
@@ -32,46 +34,48 @@ FAR = 25000
 #: Edge of a tile in voxels.
 TILE = 24
 #: Rows of `RimSums.table`.
-BAND_IN, BAND_OUT, DEEP, DEEPER, OUTER = range(5)
+BAND_IN, BAND_OUT, DEEP, DEEPER, OUTER, ASIDE = range(6)
 
 
 @dataclass(frozen=True)
 class RimSums:
-    """Sums over the band and the shells.
+    """Sums over the band and the shells, tile by tile.
 
     Parameters
     ----------
-    table : shape (5, 3): rows band within the threshold's object, band outside it, inner shell, next inner shell,
-        outer shell; columns number of voxels, volume in mm³, volume · value.
+    tiles : shape (tiles, 6, 3): rows band within the threshold's object, band outside it, inner shell, next inner
+        shell, outer shell, what of the band was left aside; columns number of voxels, volume in mm³, volume · value.
     """
 
-    table: Floats
+    tiles: Floats
 
-    def mean(self, row: int) -> float | None:
-        """Mean value of a row, None where it is empty."""
-        return float(self.table[row, 2] / self.table[row, 1]) if self.table[row, 1] > 0 else None
+    @cached_property
+    def table(self) -> Floats:
+        """Shape (6, 3): the sums of all tiles."""
+        return self.tiles.sum(axis=0)
 
 
-def rim_sums(volume: Volume, body: Body, blur_vox: Floats) -> RimSums:
+def rim_sums(volume: Volume, body: Body, blur_vox: Floats, denser: float | None) -> RimSums:
     """Sum up the band and its shells.
 
     A voxel of the object belongs to the band when an outside voxel lies within `BAND_SIGMAS` σ and half a voxel, each
     axis in its own measure, and an outside voxel when one of the object does. Left aside are voxels as near to things
-    left out, to no data and to enclosed voids: there the threshold decides.
+    left out, to no data, to enclosed voids and to denser material: there the threshold decides.
 
     Parameters
     ----------
     blur_vox : σ of the edge response in voxels [slice, row, column].
+    denser : value from which on a denser material than the rim's begins; None where there is none.
     """
     reach = np.clip(BAND_SIGMAS * blur_vox + 0.5, 1.5, 8.0)
     margin = np.floor(2 * reach).astype(np.int64)
     low = np.maximum([part.start - m for part, m in zip(body.box, margin, strict=True)], 0)
     high = np.minimum([part.stop + m for part, m in zip(body.box, margin, strict=True)], volume.shape)
     tiles = -(-(high - low) // TILE)
-    sums = np.zeros((int(tiles.prod()), 5, 3))
+    sums = np.zeros((max(int(tiles.prod()), 0), 6, 3))
     voxels = (volume.stored, volume.slope, volume.intercept, body.regions, volume.grid.voxel_volumes_mm3)
-    _sum_tiles(*voxels, low, high, tiles, reach, margin, sums)
-    return RimSums(sums.sum(axis=0))
+    _sum_tiles(*voxels, np.inf if denser is None else float(denser), low, high, tiles, reach, margin, sums)
+    return RimSums(sums[sums[:, :, 0].any(axis=1)])
 
 
 @njit(cache=True)
@@ -107,22 +111,17 @@ def _distances(distance: Array, reach: Array, margin: Array) -> Array:
 
 
 @njit(cache=True)
-def _is_void(regions: Array, k: int, j: int, i: int) -> bool:
-    """An enclosed voxel with half of its six neighbours enclosed too: a void, where lone ones are noise."""
-    n = 0
-    if k > 0:
-        n += regions[k - 1, j, i] == 2
-    if j > 0:
-        n += regions[k, j - 1, i] == 2
-    if i > 0:
-        n += regions[k, j, i - 1] == 2
-    if k + 1 < regions.shape[0]:
-        n += regions[k + 1, j, i] == 2
-    if j + 1 < regions.shape[1]:
-        n += regions[k, j + 1, i] == 2
-    if i + 1 < regions.shape[2]:
-        n += regions[k, j, i + 1] == 2
-    return n >= 3
+def _has_like_neighbours(
+    stored: Array, slope: Array, intercept: Array, regions: Array, denser: float, k: int, j: int, i: int
+) -> bool:
+    """Whether half of the six neighbours are enclosed (or dense) as this voxel is; lone ones are noise."""
+    enclosed, dense = 0, 0
+    for dk, dj, di in ((-1, 0, 0), (1, 0, 0), (0, -1, 0), (0, 1, 0), (0, 0, -1), (0, 0, 1)):
+        a, b, c = k + dk, j + dj, i + di
+        if 0 <= a < regions.shape[0] and 0 <= b < regions.shape[1] and 0 <= c < regions.shape[2]:
+            enclosed += regions[a, b, c] == 2
+            dense += slope[a] * stored[a, b, c] + intercept[a] >= denser
+    return enclosed >= 3 if regions[k, j, i] == 2 else dense >= 3
 
 
 @njit(cache=True, parallel=True)
@@ -132,6 +131,7 @@ def _sum_tiles(
     intercept: Array,
     regions: Array,
     voxel_mm3: Array,
+    denser: float,
     low: Array,
     high: Array,
     tiles: Array,
@@ -159,7 +159,12 @@ def _sum_tiles(
                     elif code <= 2:
                         filled[k, j, i] = 0
                         is_there[1] = True
-                    if code > 2 or (code == 2 and _is_void(regions, a0 + k, b0 + j, c0 + i)):
+                    apart = code > 2
+                    if code == 2 or (
+                        code == 1 and slope[a0 + k] * stored[a0 + k, b0 + j, c0 + i] + intercept[a0 + k] >= denser
+                    ):
+                        apart = _has_like_neighbours(stored, slope, intercept, regions, denser, a0 + k, b0 + j, c0 + i)
+                    if apart:
                         other[k, j, i] = 0
                         is_there[2] = True
         if not (is_there[0] and is_there[1]):
@@ -172,7 +177,7 @@ def _sum_tiles(
             for j in range(b, b1):
                 for i in range(c, c1):
                     kk, jj, ii = k - a0, j - b0, i - c0
-                    if other[kk, jj, ii] <= UNIT:
+                    if regions[k, j, i] > 2:
                         continue
                     if regions[k, j, i] == 0:
                         distance = filled[kk, jj, ii]
@@ -184,6 +189,10 @@ def _sum_tiles(
                         row = 0 if distance <= UNIT else (2 if distance <= DEEP_END else 3)
                         if distance > DEEPER_END:
                             continue
+                    if other[kk, jj, ii] <= UNIT:
+                        if row > 1:
+                            continue
+                        row = 5
                     sums[t, row, 0] += 1
                     sums[t, row, 1] += voxel_mm3[k]
                     sums[t, row, 2] += voxel_mm3[k] * (slope[k] * stored[k, j, i] + intercept[k])

@@ -40,7 +40,8 @@ def boundaries_statement(volume: Volume, ranges: Ranges, body: Body, fitness: Fi
         "inclusions with it, without closed voids and without what was left out.",
         *_between_materials(ranges, unit),
         "In a band around the outside surface a voxel counts by the share of material that its value tells, between "
-        "the levels beside the surface, so that blur does not move the surface.",
+        "the levels beside the surface, so that blur does not move the surface; near denser material, voids and things "
+        "left out the count stands.",
         f"A void is darker than the material around it by more than noise can be: the mean of 3 × 3 × 3 voxels lies "
         f"more than {level} below the local level, which is the larger of {FALSE_CALL_DEVIATIONS:g} standard "
         f"deviations of such means and {100 * SMALLEST_SHARE:g} % of the contrast, {_number(contrast, ranges)}{unit}. "
