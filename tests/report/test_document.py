@@ -284,6 +284,28 @@ def test_names_from_a_job_sheet_are_labels(case_of):
     assert "label supplied by the foundry: same grey values, not necessarily the same material" in whole
 
 
+def test_boundaries_are_stated_with_their_values(case_of, reports):
+    case = case_of()
+    whole = " ".join(texts(reports["component"]))
+    assert "Where void, outside and material part" in whole
+    assert f"below {case.body.threshold:g} GV" in whole
+
+
+def test_names_of_ranges_are_blanked_like_all_that_a_person_typed(case_of, identity_marks):
+    case = case_of(Kind.PATIENT, keep=False, names=("air", "Quorvane", "bone"), named_by="Oskar Tarbolde")
+    colours = (("Quorvane", (1, 2, 3)),)
+    views = tuple(replace(view, key=replace(view.key, colours=colours)) for view in case.views)
+    data = everything(report_bytes(replace(case, views=views)))
+    assert b"air" in data and not any(mark.encode() in data for mark in identity_marks)
+
+
+def test_endless_texts_do_not_stop_the_report(case_of):
+    job = Job(title="T" * 400, item="I " * 800, notes="n " * 4000, reviewer_name="R " * 300, source="a" * 3000)
+    case = case_of(ranges=12, names=("x" * 200,) * 12, named_by="y " * 300, job=job, views=())
+    series = replace(case.series, identity={"Comment": "v" * 5000, "Other": "word " * 1500}, kind_reason="why " * 300)
+    assert len(texts(report_bytes(replace(case, series=series)))) > 5
+
+
 def test_odd_characters_do_not_break_the_report(case_of):
     job = Job(title="Тест & <b>Ωmega</b> 漢字 \u200f\x07", item="a\nb", notes="&amp; <para>" + "x" * 400)
     whole = " ".join(texts(report_bytes(case_of(job=job))))

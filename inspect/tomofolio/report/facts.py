@@ -175,7 +175,7 @@ class Tiles(Flowable):
                 canvas.line(x - 2.5 * mm, 1, x - 2.5 * mm, self.height)
             canvas.setFont(REGULAR, SIZE_SMALL)
             canvas.setFillColor(SOFT)
-            canvas.drawString(x, y, tile.label)
+            canvas.drawString(x, y, clipped(tile.label, SIZE_SMALL, step - 3 * mm))
             y -= 1.25 * SIZE_FIGURE
             self._draw_figure(tile.figure, x, y, room)
             canvas.setFont(REGULAR, SIZE_SMALL)

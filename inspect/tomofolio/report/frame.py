@@ -15,6 +15,7 @@ from tomofolio.report.style import (
     SOFT,
     WARM,
     Sheet,
+    fitting,
     mm,
     width_of,
 )
@@ -90,6 +91,5 @@ def clipped(text: str, size: float, room: float, font: str = REGULAR) -> str:
     """The text, shortened with an ellipsis where it is wider than the room."""
     if width_of(text, size, font) <= room:
         return text
-    while text and width_of(text + "…", size, font) > room:
-        text = text[:-1]
-    return text.rstrip() + "…" if text else ""
+    text = text[: fitting(text, size, room - width_of("…", size, font), font)].rstrip()
+    return f"{text}…" if text else ""

@@ -79,7 +79,7 @@ def figure(value: float | None, interval: Interval | None = None, unit: str = ""
     """A figure with its interval, both to the same decimals."""
     if value is None or not math.isfinite(value):
         return Figure(NOT_AVAILABLE, "", "")
-    if interval is not None and not all(map(math.isfinite, interval)):
+    if interval is not None and not (all(map(math.isfinite, interval)) and interval[1] > interval[0]):
         interval = None
     decimals = decimals_for(value, interval, digits)
     span = "" if interval is None else between(plain(interval[0], decimals), plain(interval[1], decimals))

@@ -38,8 +38,16 @@ from reportlab.platypus import Flowable
 QUALITY = 92
 #: Pixels lighter than this (0..255) get dark marks.
 LIGHT = 140
+#: The cell of a slim picture is at least so many times its height wide, so that its caption stays readable.
+NARROWEST = 0.62
 #: Narrowest column for texts at the right of a picture.
 LEAST_ASIDE = 38 * mm
+#: Room for a letter at a picture's side, in units of its distance from that side.
+MARGIN_PER_INSET = 3.6
+#: Letters never get smaller than this, in points.
+SMALLEST_LETTER = 5.0
+#: Marks are set smaller on pictures lower than this.
+SMALL_PICTURE = 55 * mm
 #: Outlines on dark pixels.
 BRIGHT = rgb(255, 176, 92)
 
@@ -160,30 +168,40 @@ class Picture(Flowable):
             canvas.drawPath(path)
 
     def _draw_caption(self, mark: Caption) -> None:
-        canvas, text, scale = self.canv, printable(mark.text), self._scale
-        size = {"letter": SIZE_SMALL + 0.5, "scale": SIZE_SMALL, "number": SIZE_MARK}[mark.role]
+        scale = self._scale
         font = SEMIBOLD if mark.role == "letter" else REGULAR
-        width, tall = width_of(text, size, font), 0.7 * size
-        across, _, along = mark.align.partition("-")
+        size = SIZE_MARK if mark.role == "number" or self.image_height < SMALL_PICTURE else SIZE_SMALL
+        lines = [printable(mark.text)]
         x, y = mark.at[0] * scale, -mark.at[1] * scale
+        across, _, along = mark.align.partition("-")
+        if mark.role == "letter" and min(x, self.image_width - x) < 0.1 * self.image_width:
+            lines = lines[0].split()  # "+X −Y" at a side stands in two lines, off the object
+        elif mark.role == "scale" and (end := self._scale_bar_end()) is not None:
+            # Beside the bar, not under it: in a small print there is no room under it.
+            x, y, across, along = end[0] * scale + 3.5, -end[1] * scale - 0.5, "left", "bottom"
+        if mark.role == "letter":
+            # Smaller rather than over the object: the margin is a few times as wide as the letter's own inset.
+            widest = max(width_of(line, size, font) for line in lines)
+            inset = min(x, self.image_width - x)
+            size = max(min(size, MARGIN_PER_INSET * inset * size / widest), SMALLEST_LETTER)
+        width, step = max(width_of(line, size, font) for line in lines), 1.15 * size
+        tall = 0.7 * size + step * (len(lines) - 1)
         x -= {"left": 0.0, "right": width}.get(across, width / 2)
         y -= {"top": tall, "bottom": 0.0}.get(along, tall / 2)
-        if mark.role == "scale" and (end := self._scale_bar_end()) is not None:
-            # Beside the bar, not under it: in a small print there is no room under it.
-            x, y = end[0] * scale + 3.5, -end[1] * scale - 0.5
         x = min(max(x, 1.0), self.image_width - width - 1.0)
         y = min(max(y, 1.5 - self.image_height), -tall - 1.0)
         light = self._is_light(x / scale, -(y + tall) / scale, (x + width) / scale, -y / scale)
-        canvas.setFont(font, size)
-        canvas.setFillColor(INK if light else PAPER)
-        canvas.drawString(x, y, text)
+        self.canv.setFont(font, size)
+        self.canv.setFillColor(INK if light else PAPER)
+        for n, line in enumerate(reversed(lines)):
+            self.canv.drawString(x + (width - width_of(line, size, font)) / 2, y + n * step, line)
 
     def _draw_key(self, x: float, base: float, right: float) -> None:
         """A grey ramp with the values at its ends, or a swatch for every colour."""
         canvas, key = self.canv, self._view.key
         canvas.setFont(REGULAR, SIZE_SMALL)
         if key.window is not None:
-            self._draw_ramp(key.window, x, base)
+            self._draw_ramp(key.window, x, base, right)
             return
         for label, colour in key.colours:
             text = clipped(printable(label), SIZE_SMALL, right - x - 12)
@@ -195,11 +213,15 @@ class Picture(Flowable):
             canvas.drawString(x + 10, base, text)
             x += 10 + width_of(text, SIZE_SMALL) + 9
 
-    def _draw_ramp(self, window: tuple[float, float], left: float, base: float) -> None:
+    def _draw_ramp(self, window: tuple[float, float], left: float, base: float, right: float) -> None:
         canvas, (centre, width) = self.canv, window
         decimals = 0 if width >= 20 else 2
         low, high = (plain(centre + side * width / 2, decimals) for side in (-1, 1))
-        x, steps, length = left + width_of(low, SIZE_SMALL) + 4, 32, 26 * mm
+        high = with_unit(high, self._unit)
+        x, steps = left + width_of(low, SIZE_SMALL) + 4, 32
+        length = min(26 * mm, right - x - 4 - width_of(high, SIZE_SMALL))
+        if length < 6 * mm:
+            return
         canvas.setFillColor(SOFT)
         canvas.drawString(left, base, low)
         for n in range(steps):
@@ -210,7 +232,7 @@ class Picture(Flowable):
         canvas.setLineWidth(0.4)
         canvas.rect(x, base - 0.5, length, 6, stroke=1, fill=0)
         canvas.setFillColor(SOFT)
-        canvas.drawString(x + length + 4, base, with_unit(high, self._unit))
+        canvas.drawString(x + length + 4, base, high)
 
 
 class PictureRow(Flowable):
@@ -219,18 +241,18 @@ class PictureRow(Flowable):
     Parameters
     ----------
     pictures : from left to right.
-    columns : how many columns the row has; 0 sets the pictures one after the other, each as wide as it is.
     gutter : between two of them, in points.
+    columns : how many equal columns the row has; 0 makes each cell as wide as its picture.
     """
 
-    def __init__(self, pictures: Sequence[Picture], columns: int, gutter: float) -> None:
+    def __init__(self, pictures: Sequence[Picture], gutter: float, columns: int = 0) -> None:
         super().__init__()
-        self._pictures, self._columns, self._gutter = pictures, columns, gutter
+        self._pictures, self._gutter, self._columns = pictures, gutter, columns
         self.spaceAfter = 9
 
     def _widths(self, width: float) -> list[float]:
         if not self._columns:
-            return [picture.image_width for picture in self._pictures]
+            return [max(picture.image_width, NARROWEST * picture.image_height) for picture in self._pictures]
         return [(width - self._gutter * (self._columns - 1)) / self._columns] * len(self._pictures)
 
     def wrap(self, width: float, height: float) -> tuple[float, float]:
@@ -249,11 +271,8 @@ class PictureRow(Flowable):
 
 def level_scales(views: Sequence[View], width: float, most_height: float, gutter: float) -> list[float]:
     """Points per pixel that set pictures side by side at one height, over the whole width or to the height given."""
-    aspects = [view.pixels.shape[1] / view.pixels.shape[0] for view in views]
-    height = min(most_height, (width - gutter * (len(views) - 1)) / sum(aspects)) if views else 0.0
+    if not views:
+        return []
+    aspects = [max(view.pixels.shape[1] / view.pixels.shape[0], NARROWEST) for view in views]
+    height = min(most_height, (width - gutter * (len(views) - 1)) / sum(aspects))
     return [height / view.pixels.shape[0] for view in views]
-
-
-def common_scale(views: Sequence[View], width: float, most_height: float) -> float:
-    """Points per pixel at which every one of the pictures fits, so that they can be compared by eye."""
-    return min(min(width / view.pixels.shape[1], most_height / view.pixels.shape[0]) for view in views)

@@ -14,6 +14,15 @@ from tomofolio.series import Series
 
 WITHHELD = "(withheld)"
 
+#: What de-identified files hold in place of a name: it names nobody.
+PLACEHOLDERS = frozenset(
+    {
+        *("anon", "anonym", "anonymous", "anonymized", "anonymised", "deidentified", "de-identified"),
+        *("removed", "withheld", "hidden", "unknown", "none", "null", "empty", "test", "sample"),
+        *("patient", "person", "subject", "component", "phantom", "specimen"),
+    }
+)
+
 #: Shorter facts ("M", "47") cannot be told from ordinary text.
 SHORTEST = 4
 
@@ -68,5 +77,5 @@ def _telling(facts: Iterable[tuple[str, str]]) -> set[str]:
             parts = [part for part in re.split(r"[\^=\\,;\s]+", fact) if part]
             pieces += parts
             pieces += [" ".join(parts), " ".join(parts[::-1])]
-        marks.update(piece for piece in pieces if len(piece) >= SHORTEST)
+        marks.update(piece for piece in pieces if len(piece) >= SHORTEST and piece.lower() not in PLACEHOLDERS)
     return marks

@@ -5,7 +5,7 @@ from __future__ import annotations
 from tomofolio.measure.result import RangeFigures
 from tomofolio.ranges.result import ValueRange
 from tomofolio.report.histogram import range_colours
-from tomofolio.report.numbers import between, count, decimals_for, figure, known, plain
+from tomofolio.report.numbers import between, count, decimals_for, decimals_of, figure, known, plain
 from tomofolio.report.setting import Setting
 from tomofolio.report.style import mm
 from tomofolio.report.table import Cell, Column, DataTable, Swatch
@@ -21,12 +21,12 @@ def range_label(item: ValueRange) -> str:
 
 
 def peak_texts(item: ValueRange) -> tuple[str, str]:
-    """Peak and spread, both with the decimals that three digits of the spread need."""
+    """Peak and spread, both with the decimals that two digits of the spread need."""
     if not known(item.peak):
         return MISSING, MISSING
     if not known(item.spread) or item.spread <= 0:
         return figure(item.peak, digits=4).value, "0"
-    decimals = max(decimals_for(item.spread), 0)
+    decimals = max(decimals_of(item.spread), 0)
     return plain(item.peak, decimals), plain(item.spread, decimals)
 
 
@@ -65,7 +65,7 @@ def short_table(setting: Setting) -> DataTable:
         rows.append(
             [
                 _swatch(setting, item),
-                setting.free_text(range_label(item)),
+                range_label(item),
                 span_text(item),
                 peak_texts(item)[0],
                 amount[0],
@@ -108,7 +108,7 @@ def boundary_table(setting: Setting) -> DataTable:
     rows: list[list[Cell]] = []
     for item, _ in pairs(setting):
         peak, spread = peak_texts(item)
-        row: list[Cell] = [_swatch(setting, item), setting.free_text(range_label(item))]
+        row: list[Cell] = [_swatch(setting, item), range_label(item)]
         for value, interval in ((item.lower, item.lower_95), (item.upper, item.upper_95)):
             shown = figure(value, interval)
             row += ["open", ""] if value is None else [shown.value, shown.interval or MISSING]
@@ -138,7 +138,7 @@ def amount_table(setting: Setting) -> DataTable:
         rows.append(
             [
                 _swatch(setting, item),
-                setting.free_text(range_label(item)),
+                range_label(item),
                 amount,
                 interval,
                 share_text(figures),

@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+import re
+from dataclasses import dataclass, replace
 from functools import cached_property
 
 from tomofolio.case import Case
 from tomofolio.remarks import Remark, Severity
 from tomofolio.report.frame import SHORT_HASH, Running
-from tomofolio.report.numbers import with_unit
+from tomofolio.report.numbers import MINUS, with_unit
 from tomofolio.report.privacy import Discretion
 from tomofolio.report.style import Sheet, printable, sheet
 from tomofolio.report.words import Words, relevant, words_for
@@ -29,16 +30,21 @@ class Setting:
     @classmethod
     def of(cls, case: Case) -> Setting:
         """The setting of a case; the job sheet's page size before the preset's."""
+        discretion = Discretion(case.series, case.keep_identity)
         return cls(
-            case=case,
+            case=_with_discreet_names(case, discretion),
             sheet=sheet(case.job.page_size or case.preset.page_size),
             words=words_for(case.kind),
-            discretion=Discretion(case.series, case.keep_identity),
+            discretion=discretion,
         )
 
     def free_text(self, text: str) -> str:
         """A text that a person typed, as it may be printed."""
         return self.discretion.shown(text).strip()
+
+    def sentence(self, text: str) -> str:
+        """A sentence of another room, in this report's words and signs."""
+        return self.words.reword(_with_minus(self.free_text(text)))
 
     @property
     def title(self) -> str:
@@ -87,7 +93,7 @@ class Setting:
             known = {remark.code for remark in kept}
             kept += [remark for remark in stage.remarks if remark.code not in known]
         kept = relevant(kept, self.measures_voids)
-        kept = [Remark(r.code, r.severity, self.words.reword(self.free_text(r.text))) for r in kept]
+        kept = [Remark(r.code, r.severity, self.sentence(r.text)) for r in kept]
         return sorted(kept, key=lambda remark: WEIGHT[remark.severity])
 
     def reason(self, *codes: str) -> str:
@@ -97,3 +103,20 @@ class Setting:
                 if remark.code == code:
                     return remark.text
         return "The scan does not give this figure."
+
+
+def _with_discreet_names(case: Case, discretion: Discretion) -> Case:
+    """The case with the names of ranges, which a person typed, as they may be printed; also in the keys of pictures."""
+    items = tuple(replace(item, name=discretion.shown(item.name)) for item in case.ranges.items)
+    views = tuple(
+        replace(
+            view, key=replace(view.key, colours=tuple((discretion.shown(label), c) for label, c in view.key.colours))
+        )
+        for view in case.views
+    )
+    return replace(case, ranges=replace(case.ranges, items=items), views=views)
+
+
+def _with_minus(text: str) -> str:
+    """The text with a typographic minus before negative numbers; hyphens in dates and codes stay."""
+    return re.sub(r"(?<![\w-])-(?=\d)", MINUS, text)

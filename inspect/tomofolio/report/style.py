@@ -40,8 +40,11 @@ _load_fonts()
 #: Sizes in points, smallest to largest; the leading of a size is `leading(size)`.
 SIZE_MARK, SIZE_SMALL, SIZE_TABLE, SIZE_BODY, SIZE_HEAD, SIZE_FIGURE, SIZE_TITLE = 6.5, 7.5, 8.0, 9.0, 11.0, 17.0, 21.0
 
-#: The space between a number and its unit, at which no line may break.
-NUMBER_AND_UNIT = re.compile(r"(?<=\d) (?=(?:%|[cmµ]m[²³]?|GV|HU|GHU|kV|mA|mAs|ms|mGy|g|g/cm³|voxels)(?!\w))")
+#: Spaces at which no line may break: between a number and its unit, between an axis and its value.
+CLOSE = re.compile(
+    r"(?<=\d) (?=(?:%|[cmµ]m[²³]?|GV|HU|kV|mA|mAs|ms|mGy|g|g/cm³|voxels)(?!\w))"
+    r"|(?<=\b[xyzXYZ]) (?=[=−\d])|(?<==) (?=[−\d])"
+)
 
 #: Stands for a character that the typeface lacks.
 LACKING = "□"
@@ -110,6 +113,16 @@ def width_of(text: str, size: float, font: str = REGULAR) -> float:
     return float(pdfmetrics.stringWidth(text, font, size))
 
 
+def fitting(text: str, size: float, room: float, font: str = REGULAR) -> int:
+    """How many characters of a text fit into the room."""
+    used = 0.0
+    for n, character in enumerate(text):
+        used += width_of(character, size, font)
+        if used > room:
+            return n
+    return len(text)
+
+
 @cache
 def _glyphs() -> frozenset[int]:
     return frozenset(pdfmetrics.getFont(REGULAR).face.charToGlyph)
@@ -118,7 +131,7 @@ def _glyphs() -> frozenset[int]:
 def printable(text: str) -> str:
     """The text with thin spaces before units, spaces for control characters, boxes for what the typeface lacks."""
     glyphs = _glyphs()
-    text = NUMBER_AND_UNIT.sub("\u2009", text)
+    text = CLOSE.sub("\u2009", text)
     composed = unicodedata.normalize("NFC", text)
     spaced = "".join(" " if unicodedata.category(c) in ("Cc", "Cf", "Zl", "Zp") else c for c in composed)
     return "".join(c if ord(c) in glyphs else LACKING for c in spaced)

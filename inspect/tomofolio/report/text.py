@@ -19,6 +19,7 @@ from tomofolio.report.style import (
     SOFT,
     Color,
     Sheet,
+    fitting,
     leading,
     mm,
     printable,
@@ -27,7 +28,7 @@ from tomofolio.report.style import (
 
 # isort: split
 from reportlab.lib.styles import ParagraphStyle
-from reportlab.platypus import CondPageBreak, Flowable, Indenter, Paragraph, Spacer
+from reportlab.platypus import CondPageBreak, Flowable, Paragraph, Spacer
 
 #: reportlab breaks lines at a thin space; at this one, which the typeface draws nearly as narrow, it does not.
 NO_BREAK = "\u00a0"
@@ -150,7 +151,7 @@ def wrapped(text: str, size: float, room: float, font: str = REGULAR) -> list[st
             if line:
                 lines.append(line)
                 line = ""
-            cut = next(n for n in range(len(word), 0, -1) if n == 1 or width_of(word[:n], size, font) <= room)
+            cut = max(fitting(word, size, room, font), 1)
             lines.append(word[:cut])
             word = word[cut:]
         longer = f"{line} {word}".strip() if line else word
@@ -162,16 +163,31 @@ def wrapped(text: str, size: float, room: float, font: str = REGULAR) -> list[st
     return [*lines, line] if line else lines
 
 
+class Indented(Flowable):
+    """Another flowable, further to the right. (reportlab's own indenter gives the full width to what it splits.)"""
+
+    def __init__(self, inner: Flowable, left: float) -> None:
+        super().__init__()
+        self._inner, self._left = inner, left
+        self.spaceBefore, self.spaceAfter = inner.getSpaceBefore(), inner.getSpaceAfter()
+        self.keepWithNext = inner.getKeepWithNext()
+
+    def wrap(self, width: float, height: float) -> tuple[float, float]:
+        _, self.height = self._inner.wrap(width - self._left, height)
+        self.width = width
+        return self.width, self.height
+
+    def split(self, width: float, height: float) -> list[Flowable]:
+        return [Indented(part, self._left) for part in self._inner.splitOn(self.canv, width - self._left, height)]
+
+    def draw(self) -> None:
+        self._inner.drawOn(self.canv, self._left, 0)
+
+
 def beside(sheet: Sheet, title: str, parts: Iterable[Flowable], room: float = 18 * mm) -> list[Flowable]:
     """A block of text with its head in the narrow column at the left, under a hairline."""
-    return [
-        CondPageBreak(room),
-        Rule(before=5, after=4),
-        SideHead(title, sheet.side - 4 * mm),
-        Indenter(left=sheet.side),
-        *parts,
-        Indenter(left=-sheet.side),
-    ]
+    indented = [Indented(part, sheet.side) for part in parts]
+    return [CondPageBreak(room), Rule(before=5, after=4), SideHead(title, sheet.side - 4 * mm), *indented]
 
 
 def points(texts: Sequence[str], size: float = SIZE_BODY) -> list[Flowable]:

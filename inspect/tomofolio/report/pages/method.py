@@ -8,9 +8,9 @@ from collections.abc import Mapping, Sequence
 from tomofolio.report.facts import Fact, FactGrid
 from tomofolio.report.method_text import method_sections
 from tomofolio.report.setting import Setting
-from tomofolio.report.style import SIZE_SMALL, mm
+from tomofolio.report.style import SIZE_SMALL, mm, printable
 from tomofolio.report.table import Column, DataTable
-from tomofolio.report.text import beside, page_head, para, small
+from tomofolio.report.text import beside, page_head, para, small, wrapped
 
 # isort: split
 from reportlab.platypus import Flowable
@@ -77,8 +77,7 @@ def _job_sheet(setting: Setting) -> list[Flowable]:
     if not setting.case.keep_identity:
         text = "A job sheet was given. It is not printed, since identity is hidden."
         return list(beside(setting.sheet, "Job sheet", [para(text)]))
-    rows = [[line] for line in source.splitlines() if line.strip()]
-    table = DataTable(
-        [Column("Text as given", align="left", most=setting.sheet.text_width - setting.sheet.side)], rows, SIZE_SMALL
-    )
+    room = setting.sheet.text_width - setting.sheet.side
+    lines = [part for line in source.splitlines() for part in wrapped(printable(line), SIZE_SMALL, room)]
+    table = DataTable([Column("Text as given", align="left")], [[line] for line in lines if line.strip()], SIZE_SMALL)
     return list(beside(setting.sheet, "Job sheet", [small(f"SHA-256 {digest}"), table], room=24 * mm))

@@ -67,11 +67,6 @@ def geometry_facts(setting: Setting) -> list[Fact]:
         Fact("Covered length", with_unit(trimmed(depth), "mm") if depth else NOT_AVAILABLE, "across the slices"),
         Fact("Tilt", with_unit(plain(tilt, 1), "°") if slanted else "none", tilt_note),
         Fact(
-            "Slice thickness",
-            millimetres(thickness) if known(thickness) and thickness else NOT_AVAILABLE,
-            "as recorded",
-        ),
-        Fact(
             "No data (padding)",
             "none"
             if not missing
@@ -81,7 +76,10 @@ def geometry_facts(setting: Setting) -> list[Fact]:
             "left out of every figure" if missing else "every voxel is data",
         ),
     ]
-    if setting.case.series.patient_position:
+    acquisition = setting.case.series.acquisition
+    if thickness is not None and known(thickness) and "Slice thickness" not in acquisition:
+        facts.append(Fact("Slice thickness", millimetres(thickness), "as recorded"))
+    if setting.case.series.patient_position and "Patient position" not in acquisition:
         facts.append(Fact("Position code", setting.case.series.patient_position, "as recorded"))
     return facts
 

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 
-from tomofolio.render.view import View
+from tomofolio.render.view import Stroke, View
 from tomofolio.report.facts import Columns, Fact, FactGrid, Tile, Tiles, figure_fact
 from tomofolio.report.frame import review_state
 from tomofolio.report.numbers import NOT_AVAILABLE, Figure, count, figure, known, percent, trimmed, volume
@@ -84,13 +84,19 @@ def summary_page(setting: Setting) -> list[Flowable]:
 
 
 def chosen_views(views: Sequence[View]) -> list[View]:
-    """The oblique rendering (else the first), and the section through the largest void (else the first)."""
+    """The oblique rendering (else the first), and the section that outlines the largest void (else the first)."""
 
     def first(wanted: Sequence[Callable[[View], bool]]) -> list[View]:
         return next(([view] for test in wanted for view in views if test(view)), [])
 
     render = first([lambda v: v.kind == "render" and "oblique" in v.id, lambda v: v.kind == "render"])
-    section = first([lambda v: v.kind == "section" and "void" in v.id, lambda v: v.kind == "section"])
+    section = first(
+        [
+            lambda v: v.id.startswith("void") and any(isinstance(m, Stroke) and m.role == "outline" for m in v.marks),
+            lambda v: v.id.startswith("void"),
+            lambda v: v.kind == "section",
+        ]
+    )
     return [*render, *section]
 
 
@@ -107,7 +113,7 @@ def _parts(setting: Setting, pictures: list[Picture], tight: bool) -> list[Flowa
     parts.append(Rule(before=1, after=7))
     parts.append(Tiles(_tiles(setting)))
     if pictures:
-        parts.append(PictureRow(pictures, 0, sheet.gutter))
+        parts.append(PictureRow(pictures, sheet.gutter))
     parts.append(short_table(setting))
     parts += label_notes(setting)
     parts.append(Spacer(1, 3))
@@ -210,7 +216,7 @@ def _component_tiles(setting: Setting) -> list[Tile]:
     else:
         found = setting.case.fitness.detectable_diameter_mm
         why = setting.reason("smallest-void-unknown")
-        tiles.append(_tile("Smallest void that would be found", figure(found, unit="mm"), why, "diameter, in theory"))
+        tiles.append(_tile("Smallest void to be found", figure(found, unit="mm"), why, "diameter, in theory"))
     return tiles
 
 

@@ -32,12 +32,13 @@ def voids_page(setting: Setting) -> list[Flowable]:
     parts: list[Flowable] = page_head("Voids and inclusions", lead)
     if findings.voids is not None:
         parts += _spots(setting, findings.voids, "Voids", "void", "voids")
-    case = setting.case
-    sentences = boundaries_statement(case.volume, case.ranges, case.body, case.fitness)
-    if sentences:
-        parts += [*head("Where void, outside and material part"), *points(sentences)]
     if findings.inclusions is not None:
         parts += _spots(setting, findings.inclusions, "Inclusions", "inclusion", "inclusions")
+    case = setting.case
+    stated = boundaries_statement(case.volume, case.ranges, case.body, case.fitness)
+    sentences = [setting.sentence(text) for text in stated]
+    if sentences:
+        parts += [*head("Where void, outside and material part"), *points(sentences)]
     return parts
 
 
