@@ -115,10 +115,11 @@ def _survey(options: argparse.Namespace) -> int:
 
 def _report(options: argparse.Namespace) -> int:
     from tomofolio.clock import run_time
+
+    run_time()  # a wrong SOURCE_DATE_EPOCH is told before any work, and before libraries stumble over it
     from tomofolio.deliver.whole import check_data_path, check_report_path
     from tomofolio.progress import shown_progress
 
-    run_time()  # a wrong SOURCE_DATE_EPOCH is told before any work
     _check_exists(options.path)
     for path in (options.job,):
         if path is not None and not path.is_file():

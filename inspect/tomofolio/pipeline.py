@@ -32,6 +32,7 @@ LIBRARIES = (
     "scipy",
     "numba",
     "scikit-image",
+    "connected-components-3d",
     "pydicom",
     "pylibjpeg-openjpeg",
     "pyjpegls",

@@ -7,6 +7,7 @@ from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy import ndimage
 
 from tomofolio.render.camera import Camera
 from tomofolio.render.field import RayField, over_parts
@@ -14,6 +15,9 @@ from tomofolio.render.sampling import careful_trilinear, helper, kernel, triline
 from tomofolio.render.stepping import TILE, axis_limits, cell_of, slice_exit, stretch_exit
 
 Array = NDArray[Any]
+
+#: Slices that are looked at together.
+SLAB = 32
 
 
 def section(field: RayField, camera: Camera) -> NDArray[np.float32]:
@@ -24,8 +28,8 @@ def section(field: RayField, camera: Camera) -> NDArray[np.float32]:
 def project_maximum(field: RayField, camera: Camera, empty: float) -> NDArray[np.float32]:
     """Largest value along every ray of the camera.
 
-    Values are read where the ray meets the planes of voxels across its main axis, and half-way between them unless it
-    runs along the axis itself: then the values between are linear, and this is their exact maximum.
+    A ray along an axis of the grid shows the maxima of the lines of voxels, interpolated between the lines. On other
+    rays values are read where they meet the planes of voxels across the main axis, and half-way between them.
 
     Parameters
     ----------
@@ -38,8 +42,9 @@ def project_maximum(field: RayField, camera: Camera, empty: float) -> NDArray[np
     along = field.mm_to_index @ camera.axes[2]
     axis = int(np.argmax(np.abs(along)))
     step = along / abs(along[axis])
-    if np.abs(np.delete(step, axis)).max() > 1e-6:
-        step /= 2
+    if np.abs(np.delete(step, axis)).max() < 1e-6:
+        return _sampled(field, camera, _maxima_along(field, axis, empty), axis)
+    step /= 2
     start = (camera.first_pixel_mm - field.origin_mm) @ field.mm_to_index.T
     right, down = field.mm_to_index @ camera.axes[0], field.mm_to_index @ camera.axes[1]
     geometry = np.stack((start, right * camera.mm_per_pixel, down * camera.mm_per_pixel, step))
@@ -57,6 +62,49 @@ def project_maximum(field: RayField, camera: Camera, empty: float) -> NDArray[np
 
     over_parts(part, camera.height, TILE)
     return out
+
+
+def _maxima_along(field: RayField, axis: int, empty: float) -> NDArray[np.float32]:
+    """Largest value of every line of voxels along an axis, slab by slab; hidden voxels count as ``empty``."""
+    stored = field.stored.reshape(field.shape)
+    hidden = field.hidden.reshape(field.shape) if field.hidden_from < 255 else None
+    parts = []
+    for first in range(0, field.shape[0], SLAB):
+        slab = slice(first, first + SLAB)
+        slope, intercept = field.slope[slab, None, None], field.intercept[slab, None, None]
+        if np.ptp(slope) == 0 and np.ptp(intercept) == 0 and slope[0, 0, 0] > 0:
+            # The largest stored number is the largest value: no float copy of the slab is needed.
+            values = stored[slab]
+            if hidden is not None and (hidden[slab] >= field.hidden_from).any():
+                lowest = np.iinfo(values.dtype).min if values.dtype.kind in "iu" else -np.inf
+                values = np.where(hidden[slab] >= field.hidden_from, values.dtype.type(lowest), values)
+            most = values.max(axis=axis).astype(np.float64) * slope[0] + intercept[0]
+            if hidden is not None:
+                most = np.maximum(most, empty)
+        else:
+            every = stored[slab] * slope + intercept
+            if hidden is not None:
+                every = np.where(hidden[slab] >= field.hidden_from, empty, every)
+            most = every.max(axis=axis)
+        parts.append(most.astype(np.float32))
+    return np.max(parts, axis=0) if axis == 0 else np.concatenate(parts, axis=0)
+
+
+def _sampled(field: RayField, camera: Camera, flat: NDArray[np.float32], axis: int) -> NDArray[np.float32]:
+    """A picture of values on the two other axes, bilinear between the voxels, NaN outside the scan."""
+    start = (camera.first_pixel_mm - field.origin_mm) @ field.mm_to_index.T
+    right = field.mm_to_index @ camera.axes[0] * camera.mm_per_pixel
+    down = field.mm_to_index @ camera.axes[1] * camera.mm_per_pixel
+    across, up = np.arange(camera.width), np.arange(camera.height)[:, None]
+    places = []
+    for n in (n for n in range(3) if n != axis):
+        place = start[n] + across * right[n] + up * down[n]
+        near = np.clip(place, 0, field.size[n])
+        place = np.where(np.abs(place - near) < 1e-3, near, place)  # rounding must not drop border voxels
+        if n == 0 and not field.even:
+            place = np.interp(place, field.knots, np.arange(field.shape[0]), left=-1, right=field.shape[0])
+        places.append(place)
+    return ndimage.map_coordinates(flat, places, order=1, mode="constant", cval=np.nan)
 
 
 @helper
