@@ -257,6 +257,14 @@ def test_same_case_gives_the_same_bytes(case_of, reports):
     assert report_bytes(case_of()) == reports["component"]
 
 
+def test_environment_does_not_change_the_bytes(case_of, reports, monkeypatch):
+    monkeypatch.setenv("SOURCE_DATE_EPOCH", "1234567890")
+    data = report_bytes(case_of())
+    assert data == reports["component"]
+    with pikepdf.open(io.BytesIO(data)) as pdf:
+        assert str(pdf.docinfo["/CreationDate"]) == "D:20260506070809+00'00'"
+
+
 def test_written_file_is_the_report(case_of, reports, tmp_path):
     write_report(case_of(), tmp_path / "r.pdf")
     assert (tmp_path / "r.pdf").read_bytes() == reports["component"]

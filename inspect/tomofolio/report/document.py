@@ -64,6 +64,7 @@ def report_bytes(case: Case) -> bytes:
         furniture=furniture(sheet, setting.running),
         title=setting.title,
         subject=f"Input {setting.running.short_hash}",
+        created=case.provenance.created,
     )
     document.build(story, canvasmaker=canvas)
     return out.getvalue()

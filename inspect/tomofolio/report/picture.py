@@ -43,7 +43,7 @@ NARROWEST = 0.62
 #: Narrowest column for texts at the right of a picture.
 LEAST_ASIDE = 38 * mm
 #: Room for a letter at a picture's side, in units of its distance from that side.
-MARGIN_PER_INSET = 3.6
+MARGIN_PER_INSET = 2.9
 #: Letters never get smaller than this, in points.
 SMALLEST_LETTER = 5.0
 #: Marks are set smaller on pictures lower than this.

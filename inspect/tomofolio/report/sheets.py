@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import hashlib
 from collections.abc import Callable
+from datetime import UTC, datetime
 from typing import Any
 
 from tomofolio.report import style  # before reportlab: it names the base typeface
@@ -20,15 +22,22 @@ class SheetCanvas(Canvas):
     ----------
     furniture : draws head and foot: called with the canvas, the page's number and the number of pages.
     title, subject : document information.
+    created : ISO 8601 time of the run; reportlab would else take a date from the environment.
     """
 
-    def __init__(self, filename: Any, *, furniture: Furniture, title: str, subject: str, **options: Any) -> None:
+    def __init__(
+        self, filename: Any, *, furniture: Furniture, title: str, subject: str, created: str, **options: Any
+    ) -> None:
         options |= {"invariant": 1, "pageCompression": 1, "lang": "en-GB", "initialFontName": style.REGULAR}
         super().__init__(filename, **options)
         self._furniture = furniture
         self._held: list[dict[str, Any]] = []
         self._outline: list[tuple[int, str, int]] = []
         self._facts = (title, subject)
+        date = pdf_date(created)
+        self.setDateFormatter(lambda *parts: date)
+        # The file's identifier is a digest over its contents and, by reportlab's default, over a date of its own.
+        self._doc.signature = hashlib.md5(date.encode(), usedforsecurity=False)
 
     def note_outline(self, title: str, level: int) -> None:
         """Put the current page into the outline; level 0 is the top."""
@@ -62,3 +71,13 @@ class SheetCanvas(Canvas):
         self._code: list[str] = []
         super().save()
         style.forget_document(self._doc)
+
+
+def pdf_date(created: str) -> str:
+    """An ISO 8601 time as PDF writes it (ISO 32000-1, 7.9.4); UTC where it names no offset."""
+    try:
+        time = datetime.fromisoformat(created)
+    except ValueError:
+        time = datetime(2000, 1, 1)
+    time = time.astimezone(UTC) if time.tzinfo else time
+    return f"D:{time:%Y%m%d%H%M%S}+00'00'"

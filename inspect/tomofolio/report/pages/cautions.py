@@ -22,7 +22,7 @@ class SignOff(Flowable):
         self._given = (name, qualification, "", "")
 
     def wrap(self, width: float, height: float) -> tuple[float, float]:
-        self.width, self.height = width, 30 * mm
+        self.width, self.height = width, 38 * mm
         return self.width, self.height
 
     def draw(self) -> None:
