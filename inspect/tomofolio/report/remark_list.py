@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 from tomofolio.remarks import Remark, Severity
-from tomofolio.report.style import INK, SEMIBOLD, SIZE_BODY, SIZE_SMALL, SOFT, WARM, Color, leading, mm
+from tomofolio.report.style import INK, SEMIBOLD, SIZE_BODY, SOFT, WARM, Color, mm
 from tomofolio.report.text import para
 
 # isort: split
@@ -70,8 +70,3 @@ def grouped(remarks: Sequence[Remark]) -> list[Flowable]:
             head.keepWithNext = 1
             parts += [head, *(RemarkLine(remark) for remark in chosen)]
     return parts or [para("None of the stages has a remark.")]
-
-
-def line_height() -> float:
-    """Height of one line of a remark in small type."""
-    return leading(SIZE_SMALL)

@@ -64,7 +64,6 @@ def rgb(red: int, green: int, blue: int) -> Color:
 INK = rgb(28, 34, 38)
 SOFT = rgb(88, 98, 104)
 HAIR = rgb(206, 211, 213)
-FAINT = rgb(244, 243, 239)
 PAPER = rgb(255, 255, 255)
 ACCENT = rgb(44, 101, 123)
 WARM = rgb(164, 84, 24)

@@ -15,7 +15,6 @@ from tomofolio.report.style import (
     INK,
     REGULAR,
     SEMIBOLD,
-    SIZE_SMALL,
     SIZE_TABLE,
     SOFT,
     Color,
@@ -213,8 +212,3 @@ class DataTable(Flowable):
             canvas.setFillColor(cell.colour)
             canvas.rect(left, base - 0.5, side, side, stroke=0, fill=1)
         canvas.restoreState()
-
-
-def note_size() -> float:
-    """Size for tables with many columns."""
-    return SIZE_SMALL - 0.5

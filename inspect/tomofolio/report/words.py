@@ -26,7 +26,6 @@ class Words:
     contrast: str
     ligament: str
     matter: str
-    results: str
     axes: tuple[tuple[str, str], ...]
 
     def reword(self, text: str) -> str:
@@ -45,7 +44,6 @@ PATIENT = Words(
     contrast="grey-value difference",
     ligament="remaining wall",
     matter="tissue",
-    results="measurements",
     axes=(("Right", "Left"), ("Anterior", "Posterior"), ("Inferior", "Superior")),
 )
 
@@ -56,7 +54,6 @@ COMPONENT = Words(
     contrast="contrast",
     ligament="ligament",
     matter="material",
-    results="measurements",
     axes=(("−X", "+X"), ("−Y", "+Y"), ("−Z", "+Z")),
 )
 
