@@ -11,6 +11,7 @@ import pypdf
 import pytest
 
 from tomofolio.job import Job
+from tomofolio.remarks import Remark, Severity
 from tomofolio.report import report_bytes, write_report
 from tomofolio.report.cautions import DENIAL, cautions_text
 from tomofolio.report.frame import NOT_REVIEWED
@@ -318,3 +319,12 @@ def test_odd_characters_do_not_break_the_report(case_of):
     job = Job(title="Тест & <b>Ωmega</b> 漢字 \u200f\x07", item="a\nb", notes="&amp; <para>" + "x" * 400)
     whole = " ".join(texts(report_bytes(case_of(job=job))))
     assert "Тест & <b>Ωmega</b> □□" in whole and "&amp; <para>" in whole
+
+
+def test_a_name_that_is_an_everyday_word_leaves_no_gap_in_our_own_sentences(case_of):
+    # A gap in a sentence that a reader can complete would tell the name.
+    case = case_of()
+    remark = Remark("object-cut", Severity.NOTE, "The part reaches the first slice.")
+    series = replace(case.series, identity={"Patient name": "Part"}, remarks=(remark,))
+    whole = "\n".join(texts(report_bytes(replace(case, series=series, keep_identity=False))))
+    assert "The part reaches the first slice." in " ".join(whole.split())

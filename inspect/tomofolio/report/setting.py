@@ -18,6 +18,10 @@ from tomofolio.report.words import Words, relevant, words_for
 WEIGHT = {Severity.STOP: 0, Severity.CAUTION: 1, Severity.NOTE: 2}
 
 
+#: Codes of remarks that quote a library's message, which may repeat what stands in the header.
+QUOTING = frozenset({"decoder-warning"})
+
+
 @dataclass(frozen=True)
 class Setting:
     """One report being set."""
@@ -43,8 +47,18 @@ class Setting:
         return self.discretion.shown(text).strip()
 
     def sentence(self, text: str) -> str:
-        """A sentence of another room, in this report's words and signs."""
-        return self.words.reword(_with_minus(self.free_text(text)))
+        """A sentence of another room, in this report's words and signs.
+
+        Nothing is blanked in our own sentences: a gap in the middle of one would tell which word the hidden name is.
+        """
+        return self.words.reword(_with_minus(text))
+
+    def _remark(self, remark: Remark) -> Remark:
+        """A remark in this report's words; one that quotes what others typed is blanked like their texts."""
+        typed = [item.name for item in self.case.ranges.items if item.named_by]
+        quotes = remark.code in QUOTING or any(name in remark.text for name in typed)
+        text = self.free_text(remark.text) if quotes else remark.text
+        return Remark(remark.code, remark.severity, self.sentence(text))
 
     @property
     def title(self) -> str:
@@ -93,7 +107,7 @@ class Setting:
             known = {remark.code for remark in kept}
             kept += [remark for remark in stage.remarks if remark.code not in known]
         kept = relevant(kept, self.measures_voids)
-        kept = [Remark(r.code, r.severity, self.sentence(r.text)) for r in kept]
+        kept = [self._remark(remark) for remark in kept]
         return sorted(kept, key=lambda remark: WEIGHT[remark.severity])
 
     def reason(self, *codes: str) -> str:

@@ -159,7 +159,7 @@ def _acquisition(setting: Setting) -> list[Flowable]:
     parts: list[Flowable] = [FactGrid(facts)]
     if not case.series.acquisition:
         parts.append(small("The files record nothing of how the scan was made."))
-    reason = setting.free_text(case.series.kind_reason)
+    reason = setting.sentence(case.series.kind_reason)
     spoken = f"This report speaks of a {setting.words.subject}."
     parts.append(small(f"{spoken} {reason}" if reason else spoken))
     return parts

@@ -53,7 +53,7 @@ class HandLine(Flowable):
         self.spaceAfter = 7
 
     def wrap(self, width: float, height: float) -> tuple[float, float]:
-        self.width, self.height = width, 17.0
+        self.width, self.height = width, 34.0
         return self.width, self.height
 
     def draw(self) -> None:
