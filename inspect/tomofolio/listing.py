@@ -68,7 +68,7 @@ def survey_table(found: Sequence[SeriesSummary]) -> None:
 def closing_lines(case: Case, report: Path, data: Path | None) -> list[str]:
     """Five lines at the end of a run: what was found, what to look at first, where the files are."""
     grid, unit = case.volume.grid, case.volume.unit
-    peaks = ", ".join(f"{item.name} around {item.peak:.4g} {unit.symbol}" for item in case.ranges.items)
+    peaks = ", ".join(f"{item.name} around {float(f'{item.peak:.4g}'):g} {unit.symbol}" for item in case.ranges.items)
     lines = [
         f"Scan     {grid.shape[0]} slices of {grid.rows} × {grid.columns}, {unit.quantity} ({unit.basis.value})",
         f"Ranges   {peaks}",
@@ -86,10 +86,14 @@ def _measured(case: Case) -> str:
         texts.append(f"part {part.volume_mm3 / 1000:.4g} cm³")
     if voids is not None:
         share = "" if voids.porosity_percent is None else f", porosity {voids.porosity_percent:.3g} %"
-        texts.append(f"{voids.count} closed voids{share}")
+        texts.append(_counted(voids.count, "closed void") + share)
     if inclusions is not None:
-        texts.append(f"{inclusions.count} inclusions")
+        texts.append(_counted(inclusions.count, "inclusion"))
     return "; ".join(texts) or "range volumes"
+
+
+def _counted(number: int, thing: str) -> str:
+    return f"{number} {thing}{'' if number == 1 else 's'}"
 
 
 def _look_at(case: Case) -> str:
@@ -98,5 +102,5 @@ def _look_at(case: Case) -> str:
     if not remarks:
         return "page 1"
     worst = min(remarks, key=lambda remark: remark.severity is not Severity.STOP)
-    more = f" (and {len(remarks) - 1} more cautions in the report)" if len(remarks) > 1 else ""
+    more = f" (and {_counted(len(remarks) - 1, 'more caution')} in the report)" if len(remarks) > 1 else ""
     return f"{worst.text}{more}"
