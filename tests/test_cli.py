@@ -20,7 +20,7 @@ def run(*arguments, **environment):
     return subprocess.run(
         [sys.executable, "-m", "tomofolio", *map(str, arguments)],
         capture_output=True,
-        text=True,
+        encoding="utf-8",
         env={**os.environ, **environment},
     )
 
@@ -105,6 +105,11 @@ def test_a_zip_is_read_like_a_folder(block_series, tmp_path, capsys):
             archive.write(path, f"disc/{path.name}")
     assert main(["survey", str(tmp_path / "scan.zip"), "--json"]) == 0
     assert json.loads(capsys.readouterr().out)[0]["slices"] == 32
+
+
+def test_a_terminal_without_unicode_gets_replacements_and_no_fault(block_series):
+    result = run("survey", block_series, PYTHONIOENCODING="ascii", PYTHONUTF8="0")
+    assert result.returncode == 0 and "?" in result.stdout and "64 ? 64" in result.stdout
 
 
 def test_wrong_calls_end_with_2(block_series, tmp_path):

@@ -26,7 +26,9 @@ def installed(tmp_path_factory) -> Path:
 
 def run(code: str, installed: Path, folder: Path) -> str:
     environment = {**os.environ, "PYTHONPATH": str(installed / "site")}
-    result = subprocess.run([sys.executable, "-c", code], cwd=folder, env=environment, capture_output=True, text=True)
+    result = subprocess.run(
+        [sys.executable, "-c", code], cwd=folder, env=environment, capture_output=True, encoding="utf-8"
+    )
     assert result.returncode == 0, result.stderr
     return result.stdout.strip()
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import argparse
+import io
 import os
 import signal
 import sys
@@ -28,6 +29,9 @@ CAUTION = (
 def main(arguments: Sequence[str] | None = None) -> int:
     """Run the command line and return its exit status; one message on standard error where it is not 0."""
     signal.signal(signal.SIGTERM, _interrupt)
+    for stream in (sys.stdout, sys.stderr):
+        if isinstance(stream, io.TextIOWrapper):
+            stream.reconfigure(errors="replace")  # a terminal without Unicode shows a question mark, not a fault
     options = _parser().parse_args(arguments)
     try:
         return options.run(options)

@@ -176,6 +176,15 @@ def test_volumes_of_spheres_are_unbiased_and_intervals_hold_the_truth(blur, cnr,
     assert sum(held) >= 23
 
 
+def test_voids_of_three_voxels_are_found_where_the_noise_allows_it():
+    balls = spread_balls(9, (60, 60, 60), (1.5,) * 8)
+    found = scan((60, 60, 60), balls, cnr=20, seed=4)
+    voids, _ = found.spots
+    assert len(voids) == 8
+    errors = [spot.volume_mm3 / (b.voxels * 0.5**3) - 1 for spot, b in matched(voids, balls, found.volume.grid)]
+    assert abs(np.mean(errors)) < 0.15
+
+
 def test_places_follow_an_oblique_tilted_grid():
     # The plane equation of DICOM PS3.3 C.7.6.2.1.1 gives the true places; the tilt shears the block, not the balls'
     # index places.

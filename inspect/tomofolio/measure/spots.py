@@ -147,7 +147,7 @@ def _brightness(patch: Patch, ranges: Ranges) -> float:
 def _is_spot(patch: Patch, found: Estimate, noise: Noise, sign: int) -> bool:
     if found.relative_sd > 1 / SMALLEST_SIGNIFICANCE or found.own_contrast <= 0:
         return False
-    if patch.core.sum() > DIFFUSE_RATIO * found.voxels:
+    if not found.fitted and patch.core.sum() > DIFFUSE_RATIO * found.voxels:
         return False  # wide and faint: a crevice of the outside or structure of the material, no spot of its own
     if not found.fitted and found.contrast is None and patch.past_half.sum() < 0.1 * found.voxels:
         return False
