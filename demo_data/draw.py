@@ -8,43 +8,44 @@ from pathlib import Path
 
 import cover
 import forearm
+import numpy as np
 from dicom_files import write_series
 
 HERE = Path(__file__).resolve().parent
 
 
-def draw_cover() -> None:
-    """The component: grey values, elements of group 0014 (DICONDE), no birth date and no sex."""
-    stored, truth = cover.draw()
+def draw_cover(target: Path = HERE) -> None:
+    """The component: grey values, elements of group 0014 (DICONDE, ASTM E2339), no birth date and no sex."""
     facts = {
         "PatientName": "Housing cover HC-7, casting 0042",
         "PatientID": "HC-7-0042",
-        "PatientBirthDate": "",
-        "PatientSex": "",
         "StudyDate": "20260504",
+        "StudyTime": "093000",
         "SeriesDescription": "housing cover, full part",
         "Manufacturer": "Invented Tubes and Detectors",
         "ManufacturerModelName": "Bench CT 225",
+        "ComponentManufacturingProcedure": "High-pressure die casting",
+        "ComponentManufacturer": "Invented Castings",
+        "MaterialGrade": "AlSi9Cu3-like alloy",
         "KVP": 160,
         "XRayTubeCurrent": 2,
         "RescaleSlope": 1,
         "RescaleIntercept": 0,
         "RescaleType": "US",
     }
-    component = {(0x0014, 0x0028): ("ST", "Die-cast housing cover"), (0x0014, 0x0042): ("ST", "AlSi9Cu3-like alloy")}
-    write_series(HERE / "cover", stored, cover.SPACING, cover.ORIGIN, facts, component)
-    _write(HERE / "cover-truth.json", truth)
+    write_series(target / "cover", cover.draw(), cover.SPACING, cover.ORIGIN, facts)
+    _write(target / "cover-truth.json", cover.truth())
 
 
-def draw_forearm() -> None:
-    """The training phantom: CT numbers, recorded the way a patient is."""
-    stored, truth = forearm.draw()
+def draw_forearm(target: Path = HERE) -> None:
+    """The training phantom: CT numbers in 12 bits, recorded the way a patient is."""
     facts = {
         "PatientName": "Phantom^Training Arm",
         "PatientID": "TRAINING-ARM-3",
-        "PatientBirthDate": "19000101",
         "PatientSex": "O",
         "StudyDate": "20260511",
+        "StudyTime": "141500",
+        "StudyDescription": "Training phantom",
         "SeriesDescription": "training arm 1.25 mm smooth",
         "BodyPartExamined": "FOREARM",
         "PatientPosition": "HFS",
@@ -52,15 +53,17 @@ def draw_forearm() -> None:
         "KVP": 120,
         "XRayTubeCurrent": 110,
         "ConvolutionKernel": "SMOOTH-2",
+        "GantryDetectorTilt": 0,
         "ReconstructionDiameter": round(forearm.SHAPE[2] * forearm.SPACING[2], 3),
         "WindowCenter": 50,
         "WindowWidth": 400,
         "RescaleSlope": 1,
-        "RescaleIntercept": 0,
+        "RescaleIntercept": forearm.LOWEST,
         "RescaleType": "HU",
     }
-    write_series(HERE / "forearm", stored, forearm.SPACING, forearm.ORIGIN, facts)
-    _write(HERE / "forearm-truth.json", truth)
+    stored = (forearm.draw() - forearm.LOWEST).astype(np.uint16)
+    write_series(target / "forearm", stored, forearm.SPACING, forearm.ORIGIN, facts, bits=12)
+    _write(target / "forearm-truth.json", forearm.truth())
 
 
 def _write(path: Path, truth: dict) -> None:
