@@ -19,6 +19,8 @@ Array = NDArray[np.float64]
 LARGEST_FITTED_VOX = 9.0
 #: The fit stands when its residuals are no larger than the noise makes them, times this.
 LARGEST_MISFIT = 1.6
+#: … and when it departs from the summed deficit by no more than so many of the sum's standard uncertainties.
+LARGEST_DEPARTURE = 3.0
 #: Relative standard uncertainties that no voxel tells: level of the void, blur, shape of the model.
 LEVEL_RELATIVE, MODEL_RELATIVE = 0.01, 0.02
 #: A plateau is taken where at least this many voxels lie deeper than the blur reaches.
@@ -78,7 +80,8 @@ def estimate(patch: Patch, noise: Noise, contrast: float, spacing_vox: Array, *,
     diameter = (6 * total * float(spacing_vox.prod()) / np.pi) ** (1 / 3)
     if diameter <= LARGEST_FITTED_VOX:
         fit = _fit(patch, share, noise, own_contrast, spacing_vox, blur, diameter, centre)
-        if fit is not None:
+        # A ball may fit one of two spots that touch: then it holds less than what is missing.
+        if fit is not None and abs(fit[0] - total) <= LARGEST_DEPARTURE * relative * total:
             total, relative, centre = fit
             fitted = True
     model = MODEL_RELATIVE if fitted else 0.5 * MODEL_RELATIVE
@@ -145,7 +148,7 @@ def _fit(
     near = np.linalg.norm(points - place, axis=1) < radius + 1.5 * blur
     if not (near & own).any() or np.linalg.norm(place - centre * spacing_vox) > radius + 2 * blur:
         return None
-    misfit = float((residual[near & own] ** 2).mean())
+    misfit = max(float((residual[near & own] ** 2).mean()), float((residual[own] ** 2).mean()))
     if misfit > (LARGEST_MISFIT * sd) ** 2 + 0.03**2:
         return None
     # Least squares that ignores the correlation, with the covariance that the correlated noise gives it (sandwich).

@@ -6,12 +6,13 @@ from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
-from numba import njit, prange
+from numba import njit
 from numpy.typing import NDArray
 from scipy import ndimage
 
 from tomofolio.body.result import Body, Region
 from tomofolio.ranges.result import Ranges
+from tomofolio.threads import over_parts
 from tomofolio.volume import Volume
 
 Array = NDArray[Any]
@@ -53,7 +54,8 @@ def level_field(volume: Volume, ranges: Ranges, body: Body) -> LevelField:
     medians = np.full(size, np.nan, np.float32)
     counts = np.zeros(size, np.float32)
     voxels = (volume.stored, volume.slope, volume.intercept, body.regions)
-    _medians(*voxels, np.array(start), lower, upper, medians, counts)
+    arguments = (*voxels, np.array(start), lower, upper)
+    over_parts(lambda part: _medians(*arguments, part.start, part.stop, medians, counts), size[0], 2)
     known = np.isfinite(medians)
     if not known.any():
         return LevelField(np.full(size, main.peak, np.float32), start)
@@ -82,7 +84,7 @@ def _smoothed(values: NDArray, weight: NDArray, fallback: float) -> NDArray[np.f
     return field
 
 
-@njit(cache=True, parallel=True)
+@njit(cache=True, nogil=True)
 def _medians(
     stored: Array,
     slope: Array,
@@ -91,12 +93,14 @@ def _medians(
     start: Array,
     lower: float,
     upper: float,
+    first: int,
+    last: int,
     medians: Array,
     counts: Array,
 ) -> None:
     slices, rows, columns = stored.shape
-    for a in prange(medians.shape[0]):
-        held = np.empty(CELL * CELL * CELL, np.float32)
+    held = np.empty(CELL * CELL * CELL, np.float32)
+    for a in range(first, last):
         for b in range(medians.shape[1]):
             for c in range(medians.shape[2]):
                 n = 0
@@ -107,10 +111,15 @@ def _medians(
                             if regions[k, j, i] == 1 and _is_deep(regions, k, j, i):
                                 value = slope[k] * stored[k, j, i] + intercept[k]
                                 if lower <= value < upper:
-                                    held[n] = value
+                                    # Kept sorted as it grows: at most 64 values, and no sort to compile.
+                                    at = n
+                                    while at > 0 and held[at - 1] > value:
+                                        held[at] = held[at - 1]
+                                        at -= 1
+                                    held[at] = value
                                     n += 1
                 if n >= 8:
-                    medians[a, b, c] = np.median(held[:n])
+                    medians[a, b, c] = (held[(n - 1) // 2] + held[n // 2]) / 2
                     counts[a, b, c] = n
 
 

@@ -5,10 +5,11 @@ from __future__ import annotations
 from typing import Any
 
 import numpy as np
-from numba import njit, prange
+from numba import njit
 from numpy.typing import NDArray
 
 from tomofolio.body.result import Body
+from tomofolio.threads import over_parts
 from tomofolio.volume import Volume
 
 Array = NDArray[Any]
@@ -23,11 +24,13 @@ def outside_points(volume: Volume, body: Body) -> NDArray[np.float64]:
         return np.empty((0, 3))
     box = np.array([(part.start, part.stop) for part in body.box])
     counts = np.zeros(volume.shape[0], np.int64)
-    _count(body.regions, box, counts)
+    start, slices = body.box[0].start, body.box[0].stop - body.box[0].start
+    over_parts(lambda p: _count(body.regions, box, start + p.start, start + p.stop, counts), slices, 8)
     first = np.concatenate(([0], np.cumsum(counts)))
     points = np.empty((first[-1], 3), np.float32)
     voxels = (volume.stored, volume.slope, volume.intercept, body.regions)
-    _fill(*voxels, box, float(body.threshold), first, points)
+    arguments = (*voxels, box, float(body.threshold), first)
+    over_parts(lambda p: _fill(*arguments, start + p.start, start + p.stop, points), slices, 8)
     return points.astype(np.float64)
 
 
@@ -36,10 +39,10 @@ def _is_out(code: int) -> bool:
     return code != 1 and code != 2
 
 
-@njit(cache=True, parallel=True)
-def _count(regions: Array, box: Array, counts: Array) -> None:
+@njit(cache=True, nogil=True)
+def _count(regions: Array, box: Array, low: int, high: int, counts: Array) -> None:
     slices, rows, columns = regions.shape
-    for k in prange(box[0, 0], box[0, 1]):
+    for k in range(low, high):
         n = 0
         for j in range(box[1, 0], box[1, 1]):
             for i in range(box[2, 0], box[2, 1]):
@@ -53,7 +56,7 @@ def _count(regions: Array, box: Array, counts: Array) -> None:
         counts[k] = n
 
 
-@njit(cache=True, parallel=True)
+@njit(cache=True, nogil=True)
 def _fill(
     stored: Array,
     slope: Array,
@@ -62,9 +65,11 @@ def _fill(
     box: Array,
     threshold: float,
     first: Array,
+    low: int,
+    high: int,
     points: Array,
 ) -> None:
-    for k in prange(box[0, 0], box[0, 1]):
+    for k in range(low, high):
         if first[k] < first[k + 1]:
             _fill_slice(stored, slope, intercept, regions, box, threshold, k, first[k], points)
 

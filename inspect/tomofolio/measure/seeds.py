@@ -6,7 +6,7 @@ from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
-from numba import njit, prange
+from numba import njit
 from numpy.typing import NDArray
 
 from tomofolio.body.result import Body
@@ -14,6 +14,7 @@ from tomofolio.body.runs import Runs, find_runs
 from tomofolio.fitness.detection import FALSE_CALL_DEVIATIONS, SMALLEST_SHARE
 from tomofolio.fitness.result import Fitness
 from tomofolio.measure.level import CELL, LevelField
+from tomofolio.threads import over_parts
 from tomofolio.volume import Volume
 
 Array = NDArray[Any]
@@ -73,7 +74,10 @@ def seed_runs(volume: Volume, body: Body, field: LevelField, contrast: float, no
     flags = np.zeros(volume.shape, np.uint8)
     box = np.array([(part.start, part.stop) for part in body.box])
     voxels = (volume.stored, volume.slope, volume.intercept, body.regions)
-    _flag(*voxels, field.cells, np.array(field.start), box, float(threshold), reach, flags)
+    arguments = (*voxels, field.cells, np.array(field.start), box, float(threshold), reach)
+    first, last = max(box[0, 0], reach[0]), min(box[0, 1], volume.shape[0] - reach[0])
+    count = max(int(last - first), 0)
+    over_parts(lambda part: _flag(*arguments, first + part.start, first + part.stop, flags), count, 8)
     return find_runs(flags, [_DARK]), find_runs(flags, [_BRIGHT])
 
 
@@ -107,7 +111,7 @@ def _near_outside(regions: Array, k: int, j: int, i: int, reach: Array) -> bool:
     return False
 
 
-@njit(cache=True, parallel=True)
+@njit(cache=True, nogil=True)
 def _flag(
     stored: Array,
     slope: Array,
@@ -118,15 +122,17 @@ def _flag(
     box: Array,
     threshold: float,
     reach: Array,
+    first: int,
+    last: int,
     flags: Array,
 ) -> None:
-    slices, rows, columns = stored.shape
+    _, rows, columns = stored.shape
     j0, j1 = max(box[1, 0], reach[1]), min(box[1, 1], rows - reach[1])
     i0, i1 = max(box[2, 0], reach[2]), min(box[2, 1], columns - reach[2])
     # Between these no voxel can be a seed, whatever its own level: most voxels need no look at the field.
     lowest, highest = cells.max() - threshold, cells.min() + threshold
-    for k in prange(max(box[0, 0], reach[0]), min(box[0, 1], slices - reach[0])):
-        sums = np.empty(columns, np.float32)
+    sums = np.empty(columns, np.float32)
+    for k in range(first, last):
         for j in range(j0, j1):
             # Sum over 3 × 3 slices and rows first: three of them make the mean of 27.
             for i in range(i0 - 1, i1 + 1):

@@ -7,18 +7,16 @@ largest value, so a view can leap over what its table makes clear (Levoy, ACM TO
 
 from __future__ import annotations
 
-from collections.abc import Callable
-from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 from functools import cached_property
 from typing import Any
 
 import numpy as np
-from numba import get_num_threads
 from numpy.typing import NDArray
 
 from tomofolio.body.result import Body, Region
 from tomofolio.render.sampling import helper, kernel, sample_points
+from tomofolio.threads import over_parts
 from tomofolio.volume import Volume
 
 Array = NDArray[Any]
@@ -160,24 +158,6 @@ def make_field(volume: Volume, body: Body | None = None) -> RayField:
         highest=highest,
         has_hidden=has_hidden,
     )
-
-
-def over_parts(work: Callable[[slice], None], count: int, size: int) -> None:
-    """Call ``work`` for stretches of ``range(count)`` on as many threads as numba is told to use.
-
-    Plain threads over kernels that let go of the interpreter lock: compiles in a third of the time of a parallel
-    kernel, and what each stretch writes does not depend on who runs it.
-    """
-    parts = [slice(first, min(first + size, count)) for first in range(0, count, size)]
-    threads = min(get_num_threads(), len(parts))
-    if threads < 2:
-        for part in parts:
-            work(part)
-        return
-    work(parts[0])  # the first call may compile; two threads must not do that twice
-    with ThreadPoolExecutor(max_workers=threads) as pool:
-        for _ in pool.map(work, parts[1:]):
-            pass
 
 
 def _read_only(array: Array) -> Array:

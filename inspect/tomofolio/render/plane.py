@@ -10,9 +10,10 @@ from numpy.typing import NDArray
 from scipy import ndimage
 
 from tomofolio.render.camera import Camera
-from tomofolio.render.field import RayField, over_parts
+from tomofolio.render.field import RayField
 from tomofolio.render.sampling import careful_trilinear, helper, kernel, trilinear
 from tomofolio.render.stepping import TILE, axis_limits, cell_of, slice_exit, stretch_exit
+from tomofolio.threads import over_parts
 
 Array = NDArray[Any]
 

@@ -17,9 +17,10 @@ from tomofolio.body.result import Body
 from tomofolio.render.camera import Camera
 from tomofolio.render.casting import cast_rows
 from tomofolio.render.colours import linear_ground
-from tomofolio.render.field import RayField, make_field, over_parts
+from tomofolio.render.field import RayField, make_field
 from tomofolio.render.stepping import FARTHEST, THIN, TILE, UNIFORM, VISIBLE_WITH_HIDDEN
 from tomofolio.render.tables import TransferTable
+from tomofolio.threads import over_parts
 from tomofolio.volume import Volume
 
 #: Direction to the light in the picture's axes (right, down, away): over the viewer's left shoulder.
