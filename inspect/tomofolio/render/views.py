@@ -23,10 +23,10 @@ from tomofolio.volume import Kind, Volume
 Vector = tuple[float, float, float]
 
 #: Long side of a rendered picture in pixels, and the margins that keep letters and scale bar off the object.
-RENDER_SIZE, MARGIN, FOOT = 840, 50, 64
+RENDER_SIZE, MARGIN, FOOT = 760, 46, 60
 
 #: Step of the rays in voxels: with the table integrated between samples a finer one changes no pixel visibly.
-STEP = 0.8
+STEP = 1.0
 
 #: id, title, seen from, direction of sight, up
 PATIENT_DIRECTIONS: tuple[tuple[str, str, str, Vector, Vector], ...] = (
